@@ -1,0 +1,1 @@
+"""From GNSS fixes and bearings to positions in a CRS."""

@@ -1,0 +1,1 @@
+"""The only readers of a round folder: sheets, camera cards, EXIF, pictures."""

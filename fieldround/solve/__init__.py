@@ -1,0 +1,1 @@
+"""The adjustment, its uncertainty and the verdicts: numbers in, numbers out."""
