@@ -132,13 +132,41 @@ class _Sight:
     values: np.ndarray
 
 
-def _sight(marks: Marks, state: PairState, values: np.ndarray) -> _Sight:
-    mark_values = values[marks.view]
-    ideal = pixels_to_ideal(marks.px, mark_values)
+@dataclass(frozen=True)
+class _Touch:
+    """A touching residual in metres with its gradients; `by_axis`, `foot` for cylinders only."""
+
+    metres: np.ndarray
+    by_ray: np.ndarray
+    by_offset: np.ndarray
+    by_axis: np.ndarray | None = None
+    foot: np.ndarray | None = None
+
+
+def _sight(marks: Marks, ideal: np.ndarray, state: PairState, values: np.ndarray) -> _Sight:
     camera_ray = np.concatenate([ideal, np.ones((len(ideal), 1))], axis=1)
     rotation = state.rotations[marks.view]
     ray = np.einsum("mji,mj->mi", rotation, camera_ray)
-    return _Sight(ideal, camera_ray, ray, rotation, state.stations[marks.view], mark_values)
+    return _Sight(ideal, camera_ray, ray, rotation, state.stations[marks.view], values)
+
+
+def _limb_touch(marks: Marks, state: PairState, sight: _Sight) -> _Touch:
+    k = marks.object
+    touch = axis_distance(sight.ray, state.axes[k], state.points[k] - sight.station)
+    side, taper = marks.side[:, None], state.tapers[k][:, None]
+    return _Touch(
+        marks.side * touch.distance - state.radii[k] - state.tapers[k] * touch.foot,
+        side * touch.by_ray - taper * touch.foot_by_ray,
+        side * touch.by_offset - taper * touch.foot_by_offset,
+        side * touch.by_axis - taper * touch.foot_by_axis,
+        touch.foot,
+    )
+
+
+def _outline_touch(marks: Marks, state: PairState, sight: _Sight) -> _Touch:
+    k = marks.object
+    touch = centre_distance(sight.ray, state.points[k] - sight.station)
+    return _Touch(touch.distance - state.radii[k], touch.by_ray, touch.by_offset)
 
 
 def _scatter(jacobian: np.ndarray, columns: np.ndarray, parts: np.ndarray) -> None:
@@ -148,72 +176,77 @@ def _scatter(jacobian: np.ndarray, columns: np.ndarray, parts: np.ndarray) -> No
         jacobian[rows, columns[rows] + offset] += parts[rows, offset]
 
 
-def _touch_jacobian(
-    marks: Marks,
-    layout: Layout,
-    sight: _Sight,
-    by_ray: np.ndarray,
-    by_offset: np.ndarray,
-) -> tuple[np.ndarray, np.ndarray]:
-    """Pose and camera part of a touching residual, and the pixel scale that whitens it.
-
-    by_ray, by_offset : (m, 3) gradients of the residual in metres
-    returns : jacobian (m, size) and weight (m,) that turns metres into sds of the mark
-    """
+def _by_pixel(sight: _Sight, by_ray: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Gradient of a touching residual by the pixel (m, 2), by the camera ray (m, 3), and the
+    inverse Jacobian of the pixel by the ideal point (m, 2, 2)."""
     in_camera = np.einsum("mij,mj->mi", sight.rotation, by_ray)
     plane = pixel_by_ideal(sight.ideal, sight.values)
-    inverse = np.linalg.inv(plane)
-    by_pixel = np.einsum("mi,mij->mj", in_camera[:, :2], inverse)
-    weight = 1.0 / (marks.sd_px * np.sqrt(np.einsum("mi,mi->m", by_pixel, by_pixel)))
+    inverse = np.empty_like(plane)
+    inverse[:, 0, 0], inverse[:, 1, 1] = plane[:, 1, 1], plane[:, 0, 0]
+    inverse[:, 0, 1], inverse[:, 1, 0] = -plane[:, 0, 1], -plane[:, 1, 0]
+    inverse /= (plane[:, 0, 0] * plane[:, 1, 1] - plane[:, 0, 1] * plane[:, 1, 0])[:, None, None]
+    return np.einsum("mi,mij->mj", in_camera[:, :2], inverse), in_camera, inverse
+
+
+def _touching_block(
+    marks: Marks,
+    layout: Layout,
+    state: PairState,
+    values: np.ndarray,
+    touching: Callable[[Marks, PairState, _Sight], _Touch],
+) -> Block:
+    """Distance of each mark from the limb in the picture, in sds of the mark.
+
+    The residual is the pixel distance to the nearest point of the fitted limb, and the Jacobian
+    is taken AT that point: a gradient taken at the mark itself carries the mark's own noise and
+    pulls ranges long (the squared residuals do not cancel).
+    """
+    mark_values = values[marks.view]
+    sight = _sight(marks, pixels_to_ideal(marks.px, mark_values), state, mark_values)
+    touch = touching(marks, state, sight)
+    by_pixel, _, inverse = _by_pixel(sight, touch.by_ray)
+    slope = np.einsum("mi,mi->m", by_pixel, by_pixel)
+    to_limb = -(touch.metres / slope)[:, None] * by_pixel
+    ideal = sight.ideal + np.einsum("mij,mj->mi", inverse, to_limb)
+    at_limb = distort(ideal, mark_values) * mark_values[:, :2] + mark_values[:, 2:4]
+
+    sight = _sight(marks, ideal, state, mark_values)
+    touch = touching(marks, state, sight)
+    by_pixel, in_camera, _ = _by_pixel(sight, touch.by_ray)
+    scale = 1.0 / np.sqrt(np.einsum("mi,mi->m", by_pixel, by_pixel))
+    off = np.einsum("mi,mi->m", marks.px - at_limb, by_pixel) * scale + touch.metres * scale
+    weight = scale / marks.sd_px
+
     jacobian = np.zeros((len(marks), layout.size))
     # The ray turns against the camera: d(residual) = -omega . (d x R g).
-    pose = np.concatenate([-np.cross(sight.camera_ray, in_camera), -by_offset], axis=1)
+    pose = np.concatenate([-np.cross(sight.camera_ray, in_camera), -touch.by_offset], axis=1)
     _scatter(jacobian, layout.pose[marks.view], pose)
-    by_values = -np.einsum("mi,mij->mj", by_pixel, pixel_by_values(sight.ideal, sight.values))
+    by_values = -np.einsum("mi,mij->mj", by_pixel, pixel_by_values(ideal, mark_values))
     _scatter(jacobian, layout.camera[marks.view], by_values)
-    return jacobian, weight
-
-
-def limb_block(
-    problem: PairProblem, layout: Layout, state: PairState, values: np.ndarray
-) -> Block:
-    """Limb marks of cylinders: side * distance - radius at the foot, in sds of the mark."""
-    marks = problem.limbs
-    sight = _sight(marks, state, values)
     k = marks.object
-    axes = state.axes[k]
-    touch = axis_distance(sight.ray, axes, state.points[k] - sight.station)
-    side, taper = marks.side[:, None], state.tapers[k][:, None]
-    metres = marks.side * touch.distance - state.radii[k] - state.tapers[k] * touch.foot
-    by_offset = side * touch.by_offset - taper * touch.foot_by_offset
-    by_axis = side * touch.by_axis - taper * touch.foot_by_axis
-    by_ray = side * touch.by_ray - taper * touch.foot_by_ray
-    jacobian, weight = _touch_jacobian(marks, layout, sight, by_ray, by_offset)
-    basis = square_basis(axes)
-    _scatter(jacobian, layout.axis[k], np.einsum("mi,mij->mj", by_axis, basis))
-    _scatter(jacobian, layout.point[k], np.einsum("mi,mij->mj", by_offset, basis))
     _scatter(jacobian, layout.radius[k], -np.ones((len(marks), 1)))
-    _scatter(jacobian, layout.taper[k], -touch.foot[:, None])
+    if touch.by_axis is None or touch.foot is None:
+        _scatter(jacobian, layout.point[k], touch.by_offset)
+    else:
+        basis = square_basis(state.axes[k])
+        _scatter(jacobian, layout.axis[k], np.einsum("mi,mij->mj", touch.by_axis, basis))
+        _scatter(jacobian, layout.point[k], np.einsum("mi,mij->mj", touch.by_offset, basis))
+        _scatter(jacobian, layout.taper[k], -touch.foot[:, None])
     return Block(
-        "limb marks", metres * weight, jacobian * weight[:, None], partial(huber, limit=MARK_LIMIT)
+        "limb marks", off / marks.sd_px, jacobian * weight[:, None], partial(huber, limit=MARK_LIMIT)
     )
+
+
+def limb_block(problem: PairProblem, layout: Layout, state: PairState, values: np.ndarray) -> Block:
+    """Limb marks of cylinders: the limb is where side * distance = radius + taper * foot."""
+    return _touching_block(problem.limbs, layout, state, values, _limb_touch)
 
 
 def outline_block(
     problem: PairProblem, layout: Layout, state: PairState, values: np.ndarray
 ) -> Block:
-    """Outline marks of balls: distance to the centre - radius, in sds of the mark."""
-    marks = problem.outlines
-    sight = _sight(marks, state, values)
-    k = marks.object
-    touch = centre_distance(sight.ray, state.points[k] - sight.station)
-    metres = touch.distance - state.radii[k]
-    jacobian, weight = _touch_jacobian(marks, layout, sight, touch.by_ray, touch.by_offset)
-    _scatter(jacobian, layout.point[k], touch.by_offset)
-    _scatter(jacobian, layout.radius[k], -np.ones((len(marks), 1)))
-    return Block(
-        "limb marks", metres * weight, jacobian * weight[:, None], partial(huber, limit=MARK_LIMIT)
-    )
+    """Outline marks of balls: the outline is where the distance to the centre = radius."""
+    return _touching_block(problem.outlines, layout, state, values, _outline_touch)
 
 
 def end_block(
