@@ -25,7 +25,8 @@ class Camera:
     focal_px, centre_px and distortion (k1 k2 p1 p2 k3, Brown-Conrady, OpenCV's order) hold for
     the picture of `size_px` (width >= height); the sd fields are the card's own.
     `focal_heavy_tailed` marks a card made from EXIF: its focal sd is only the core of a
-    heavy-tailed prior. `ratio_sd` > 0 frees fx / fy. `source` is 'card' or 'exif'.
+    heavy-tailed prior. `ratio_sd` > 0 frees fx / fy. `source` is 'card' or 'exif'. A card holds
+    for photos of its own `digital_zoom` only (None = none).
     """
 
     name: str
@@ -43,6 +44,7 @@ class Camera:
     ratio_sd: float = 0.0
     focal_heavy_tailed: bool = False
     source: str = "card"
+    digital_zoom: float | None = None
 
 
 @dataclass(frozen=True)
@@ -70,7 +72,7 @@ class Fix:
 class Photo:
     """One photo of the round: its file, its upright size, its camera and what its EXIF says.
 
-    name      : as the sheets write it, relative to photos/
+    name      : as the file lies under photos/; the marks and pairs of a `Round` use this name
     size_px   : width, height of the picture turned upright
     turn_deg  : clockwise quarter turn that made the card's landscape picture upright
                 (0, 90, 180, 270)
@@ -79,6 +81,7 @@ class Photo:
     direction_deg : where the camera pointed, clockwise; `direction_from` 'true' or 'magnetic'
     problems  : sentences about EXIF that could not be used
     digest    : SHA-256 of the file's bytes, hexadecimal
+    orientation : EXIF Orientation the decoded pixels still need (1 = none), see `load_picture`
     """
 
     name: str
@@ -97,6 +100,7 @@ class Photo:
     focal_35mm: float | None = None
     problems: tuple[str, ...] = ()
     digest: str = ""
+    orientation: int = 1
 
 
 @dataclass(frozen=True)

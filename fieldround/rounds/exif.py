@@ -1,0 +1,182 @@
+"""What one photo's EXIF says of camera, place, direction and time, and what it says badly.
+
+In: the bytes or the path of a photo file. Out: `ExifFacts`; whatever cannot be used is a sentence
+in `problems`, never an exception and never a wait.
+"""
+
+from __future__ import annotations
+
+import io
+import logging
+import math
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from datetime import datetime
+from pathlib import Path
+from typing import Any, BinaryIO, cast
+
+from fieldround.rounds.exif_fix import read_direction, read_fix
+from fieldround.rounds.exif_time import read_time
+from fieldround.rounds.exif_values import Tags, number, number_list, text
+from fieldround.rounds.model import Fix
+
+# Reads that a garbled directory may cost before it is given up; an ordinary photo takes some 700.
+_MOST_READS = 60_000
+# No text tag of use is longer; a garbled count must not reserve gigabytes.
+_LONGEST_READ = 1 << 20
+
+_IMAGE, _EXIF = "Image", "EXIF"
+_MAKE, _MODEL, _ORIENTATION = (_IMAGE, 0x010F), (_IMAGE, 0x0110), (_IMAGE, 0x0112)
+_FOCAL, _FOCAL_35, _ZOOM = (_EXIF, 0x920A), (_EXIF, 0xA405), (_EXIF, 0xA404)
+_LENS, _WIDTH = (_EXIF, 0xA434), (_EXIF, 0xA002)
+_PLANE_X, _PLANE_UNIT = (_EXIF, 0xA20E), (_EXIF, 0xA210)
+# EXIF 2.32, FocalPlaneResolutionUnit as ResolutionUnit (2, 3), with TIFF/EP's 4 and 5.
+_PLANE_UNIT_MM = {2: 25.4, 3: 10.0, 4: 1.0, 5: 0.001}
+
+
+@dataclass(frozen=True)
+class ExifFacts:
+    """The usable facts of one photo's EXIF, None where it states none.
+
+    orientation  : EXIF Orientation, 1 to 8
+    digital_zoom : ratio above 1, None without digital zoom
+    plane_px_per_mm, plane_width_px : focal-plane resolution and the width it was stated for
+    taken_at, fix, direction_deg, direction_from : as in `model.Photo`
+    """
+
+    orientation: int = 1
+    make: str | None = None
+    model: str | None = None
+    lens: str | None = None
+    focal_mm: float | None = None
+    focal_35mm: float | None = None
+    digital_zoom: float | None = None
+    plane_px_per_mm: float | None = None
+    plane_width_px: float | None = None
+    taken_at: datetime | None = None
+    fix: Fix | None = None
+    direction_deg: float | None = None
+    direction_from: str | None = None
+    problems: tuple[str, ...] = ()
+
+
+def read_exif(source: bytes | Path) -> ExifFacts:
+    """Read the EXIF of one photo (JPEG, HEIC, TIFF, PNG).
+
+    source  : the file's bytes, or its path
+    returns : facts; empty with one problem when the EXIF cannot be read at all
+    source of the tags' meaning: CIPA DC-008 (EXIF 2.32), sections 4.6.4 to 4.6.6
+    """
+    problems: list[str] = []
+    if isinstance(source, bytes):
+        tags = _tags(io.BytesIO(source), problems)
+    else:
+        try:
+            with source.open("rb") as stream:
+                tags = _tags(stream, problems)
+        except OSError as wrong:
+            return ExifFacts(problems=(f"the file cannot be read ({wrong.strerror or wrong})",))
+    fix = _guarded(lambda: read_fix(tags, problems), None, "the GPS position", problems)
+    taken_at = _guarded(lambda: read_time(tags, problems), None, "the time", problems)
+    direction = _guarded(
+        lambda: read_direction(tags, problems), (None, None), "the image direction", problems
+    )
+    orientation = number(tags, _ORIENTATION)
+    if orientation is not None and orientation not in range(1, 9):
+        # 0 is written by some software for "unknown"; EXIF knows 1 to 8.
+        if orientation != 0:
+            problems.append(f"EXIF Orientation {orientation:g} is not one of 1 to 8; taken as 1")
+        orientation = None
+    zoom = number(tags, _ZOOM)
+    plane = number(tags, _PLANE_X)
+    unit_mm = _PLANE_UNIT_MM.get(int(number(tags, _PLANE_UNIT) or 2))
+    widths = number_list(tags, _WIDTH)
+    return ExifFacts(
+        orientation=int(orientation or 1),
+        make=text(tags, _MAKE),
+        model=text(tags, _MODEL),
+        lens=text(tags, _LENS),
+        focal_mm=_within(number(tags, _FOCAL), 0.3, 5000.0, "focal length", problems),
+        focal_35mm=_within(
+            number(tags, _FOCAL_35), 2.0, 10_000.0, "35 mm equivalent focal length", problems
+        ),
+        digital_zoom=zoom if zoom is not None and 1.0 < zoom < 1000.0 else None,
+        plane_px_per_mm=plane / unit_mm if plane and plane > 0 and unit_mm else None,
+        plane_width_px=widths[0] if widths and widths[0] is not None and widths[0] > 0 else None,
+        taken_at=taken_at,
+        fix=fix,
+        direction_deg=direction[0],
+        direction_from=direction[1],
+        problems=tuple(problems),
+    )
+
+
+class _EndlessError(Exception):
+    """The EXIF led the reader round in circles."""
+
+
+class _Metered:
+    """A file that may be read so often and no more, so that garbled EXIF cannot hang the reader."""
+
+    def __init__(self, stream: BinaryIO) -> None:
+        self._read = stream.read
+        self.seek = stream.seek
+        self.tell = stream.tell
+        self.left = _MOST_READS
+
+    def read(self, size: int = _LONGEST_READ) -> bytes:
+        self.left -= 1
+        if size > 4096:
+            self.left -= size >> 12
+            size = min(size, _LONGEST_READ)
+        if self.left < 0:
+            raise _EndlessError
+        return self._read(size)
+
+
+def _tags(stream: BinaryIO, problems: list[str]) -> Tags:
+    """Every tag by (directory, number): names differ between versions of the EXIF library.
+
+    Some tags come without a name (GPSHPositioningError as `GPS Tag 0x001F`), so the name is
+    never asked for.
+    """
+    import exifread
+
+    logging.getLogger("exifread").setLevel(logging.CRITICAL)
+    try:
+        named: Mapping[str, Any] = exifread.process_file(
+            cast(BinaryIO, _Metered(stream)), details=False, extract_thumbnail=False
+        )
+    except _EndlessError:
+        problems.append("the EXIF is garbled (its directories have no end) and was not used")
+        return {}
+    except Exception as wrong:
+        # The library raises whatever its parsing trips over; the photo must live on.
+        problems.append(f"the EXIF is garbled ({type(wrong).__name__}) and was not used")
+        return {}
+    return {
+        (name.partition(" ")[0], tag.tag): tag.values
+        for name, tag in named.items()
+        if hasattr(tag, "values")
+    }
+
+
+def _guarded(read: Callable[[], Any], otherwise: Any, what: str, problems: list[str]) -> Any:
+    """The reader's answer; a value it did not foresee costs that fact only, not the photo."""
+    try:
+        return read()
+    except (ArithmeticError, AttributeError, LookupError, TypeError, ValueError) as wrong:
+        problems.append(f"{what} in the EXIF is garbled ({type(wrong).__name__})")
+        return otherwise
+
+
+def _within(
+    value: float | None, least: float, most: float, what: str, problems: list[str]
+) -> float | None:
+    """The value if it can be one; 0 means "unknown" in EXIF and is no fact."""
+    if value is None or value == 0 or not math.isfinite(value):
+        return None
+    if not least <= value <= most:
+        problems.append(f"the EXIF {what} of {value:g} mm cannot be right and was not used")
+        return None
+    return value
