@@ -66,7 +66,8 @@ def camera_from_exif(facts: ExifFacts, landscape_px: tuple[int, int]) -> tuple[C
         focal_heavy_tailed=True,
         source="exif",
     )
-    return camera, f"no camera card fits; its focal length starts from {said} ({focal_sd:.0%} sd)"
+    note = f"no camera card fits {camera.name}; its focal length starts from {said}"
+    return camera, f"{note}, sd {focal_sd:.0%}"
 
 
 def _possible(focal_px: float, diagonal: float) -> bool:

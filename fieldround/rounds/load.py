@@ -98,7 +98,7 @@ def _photos(
     for name in names:
         try:
             file = read_photo(folder / name)
-            camera, turn_deg, note, problem = _camera_of(file, cards)
+            camera, turn_deg, note = _camera_of(file, cards)
         except (PictureError, CardMisfitError) as wrong:
             lost[name] = f"photo {name}: {wrong}"
             continue
@@ -111,24 +111,24 @@ def _photos(
         if note:
             notes[note] = None
         cameras[camera.name] = camera
-        photos[name] = _photo(name, file, camera, turn_deg, problem)
+        photos[name] = _photo(name, file, camera, turn_deg)
     return photos, cameras, lost, list(notes)
 
 
-def _camera_of(file: PhotoFile, cards: Sequence[Card]) -> tuple[Camera, int, str, str]:
-    """Camera, turn of its picture to the photo, a note for the round, a problem of the photo."""
+def _camera_of(file: PhotoFile, cards: Sequence[Card]) -> tuple[Camera, int, str]:
+    """Camera, turn of its picture to the photo, a note for the round or ''."""
     width, height = file.size_px
     landscape_px = (max(width, height), min(width, height))
     stored_upright = file.orientation == 1 and height > width and file.exif.orientation == 1
     matched = match_card(cards, file.exif, landscape_px, stored_upright)
     if matched is not None:
         camera, portrait, note = matched
-        return camera, 0 if portrait else file.turn_deg, note, ""
-    camera, problem = camera_from_exif(file.exif, landscape_px)
-    return camera, file.turn_deg, "", problem
+        return camera, 0 if portrait else file.turn_deg, note
+    camera, note = camera_from_exif(file.exif, landscape_px)
+    return camera, file.turn_deg, note
 
 
-def _photo(name: str, file: PhotoFile, camera: Camera, turn_deg: int, problem: str) -> Photo:
+def _photo(name: str, file: PhotoFile, camera: Camera, turn_deg: int) -> Photo:
     exif = file.exif
     return Photo(
         name=name,
@@ -145,7 +145,7 @@ def _photo(name: str, file: PhotoFile, camera: Camera, turn_deg: int, problem: s
         lens=exif.lens,
         focal_mm=exif.focal_mm,
         focal_35mm=exif.focal_35mm,
-        problems=(*exif.problems, problem) if problem else exif.problems,
+        problems=exif.problems,
         digest=file.digest,
         orientation=file.orientation,
     )

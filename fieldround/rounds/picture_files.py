@@ -15,7 +15,8 @@ from fieldround.rounds.errors import PictureError
 # Above any camera in the field; a larger header is garbled or hostile.
 MOST_PIXELS = 500_000_000
 
-FORMATS = ("JPEG", "MPO", "TIFF", "PNG")
+# A JPEG of several pictures (MPO) comes through "JPEG"; its first picture is the photo.
+FORMATS = ("JPEG", "TIFF", "PNG")
 _HEIF_BRANDS = (b"heic", b"heix", b"hevc", b"hevx", b"heim", b"heis", b"mif1", b"msf1")
 
 
