@@ -14,13 +14,8 @@ import numpy as np
 from scipy.stats import chi2
 
 from fieldround.solve.cameras import CameraPriors, free_values, prior_terms, values_moved
-from fieldround.solve.normals import (
-    Reduced,
-    cost_of,
-    inverse_scaled,
-    reduce_pair,
-    solve_scaled,
-)
+from fieldround.solve.equations import inverse_scaled, solve_scaled
+from fieldround.solve.normals import Reduced, cost_of, reduce_pair
 from fieldround.solve.problem import PairProblem
 from fieldround.solve.state import (
     CAMERA_VALUES,
@@ -79,7 +74,7 @@ def tie_freedom(problem: PairProblem) -> np.ndarray:
     return np.maximum(2 * seen - 3, 0)
 
 
-def _camera_columns(layout: Layout) -> np.ndarray:
+def shared_columns(layout: Layout) -> np.ndarray:
     """Columns of the round's camera unknowns for the pair's camera columns, in order."""
     return np.concatenate(
         [np.arange(CAMERA_VALUES * c, CAMERA_VALUES * (c + 1)) for c in layout.camera_ids]
@@ -261,13 +256,13 @@ def adjust_round(
         diagonal, gradient, cost = prior_terms(priors, values)
         normal, right = np.diag(diagonal.ravel()), -gradient.ravel()
         cost += sum(r.cost for r in reduced)
-        eliminated = []
+        solved = []
         for fit, r in zip(fits, reduced, strict=True):
-            back, forward, shared, shared_right = _eliminate(fit.layout, r, damping)
-            columns = _camera_columns(fit.layout)
+            back, forward, shared, shared_right = eliminated(fit.layout, r, damping)
+            columns = shared_columns(fit.layout)
             normal[np.ix_(columns, columns)] += shared
             right[columns] += shared_right
-            eliminated.append((back, forward, columns))
+            solved.append((back, forward, columns))
         step = np.zeros(len(right))
         if free.any():
             step[free] = solve_scaled(normal[np.ix_(free, free)], right[free])
@@ -275,7 +270,7 @@ def adjust_round(
         trial_values = values_moved(values, step.reshape(-1, CAMERA_VALUES))
         trials = []
         trial_cost = prior_terms(priors, trial_values)[2]
-        for fit, r, (back, forward, columns) in zip(fits, reduced, eliminated, strict=True):
+        for fit, r, (back, forward, columns) in zip(fits, reduced, solved, strict=True):
             own = forward - back @ step[columns]
             gain -= 0.5 * float(r.gradient[: fit.layout.own] @ forward)
             full = np.concatenate([own, step[columns]])
@@ -306,7 +301,7 @@ def _reduce(fit: PairFit, values: np.ndarray) -> Reduced:
     )
 
 
-def _eliminate(
+def eliminated(
     layout: Layout, reduced: Reduced, damping: float
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
     """Eliminate a pair's own unknowns from its reduced equations.
@@ -335,8 +330,8 @@ def _with_covariances(
     total = np.diag(diagonal.ravel())
     shares = []
     for fit, r in zip(fits, reduced, strict=True):
-        shared = _eliminate(fit.layout, r, 0.0)[2]
-        columns = _camera_columns(fit.layout)
+        shared = eliminated(fit.layout, r, 0.0)[2]
+        columns = shared_columns(fit.layout)
         total[np.ix_(columns, columns)] += shared
         shares.append((columns, shared))
     free = free_values(priors).ravel()

@@ -12,6 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from fieldround.rounds.model import Camera
+from fieldround.solve.equations import inverse_scaled
 from fieldround.solve.robust import student
 
 # A focal length from EXIF was 1 to 16 % off on real photo sets, once above 30 %: the tail of
@@ -93,6 +94,16 @@ def prior_terms(
 def free_values(priors: CameraPriors) -> np.ndarray:
     """(m, 9) True where a camera value is adjusted."""
     return priors.sds > 0.0
+
+
+def camera_covariance(camera_normal: np.ndarray, priors: CameraPriors) -> np.ndarray:
+    """Covariance (9m, 9m) of the adjusted unknowns, zero where they are held fixed."""
+    free = free_values(priors).ravel()
+    out = np.zeros_like(camera_normal)
+    if free.any():
+        grid = np.ix_(free, free)
+        out[grid] = inverse_scaled(camera_normal[grid])
+    return out
 
 
 def found_card(card: Camera, values: np.ndarray, covariance: np.ndarray) -> Camera:

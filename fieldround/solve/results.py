@@ -15,7 +15,7 @@ from fieldround.place.frames import Placement
 from fieldround.rounds.model import Camera, Round
 
 VERDICTS = ("accept", "remeasure", "no result")
-BUDGET_SOURCES = ("limb marks", "ties", "baseline", "camera", "uprightness", "roundness")
+BUDGET_SOURCES = ("limb marks", "ties", "baseline", "camera", "uprightness", "taper", "roundness")
 
 _EMPTY: Mapping[str, Any] = MappingProxyType({})
 

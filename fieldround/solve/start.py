@@ -1,7 +1,7 @@
 """Start values of one pair: poses from the ties, scale, the vertical, each object's axis.
 
-In: a `PairProblem` and camera values. Out: a `Start` (state, the problem with the sides of its
-limb marks settled, notes) or a `StartError` that says in words why there is none.
+In: a `PairProblem` and camera values. Out: the parts of a start state, or a `StartError` that
+says in words why there is none.
 """
 
 from __future__ import annotations
@@ -24,23 +24,6 @@ TIES_FEWEST = 5
 
 class StartError(RoundError):
     """A pair has no usable start; the sentence says why."""
-
-
-@dataclass(frozen=True)
-class Start:
-    """Start state of a pair.
-
-    problem : with `limbs.side` settled by the geometry
-    orientation_from : what gave the relative pose
-    lost : object index -> sentence, for objects that have no start (dropped from the problem)
-    notes : sentences for the reasons of the pair's objects, by object name ('' = the pair)
-    """
-
-    problem: PairProblem
-    state: PairState
-    orientation_from: str
-    lost: dict[str, str]
-    notes: tuple[tuple[str, str], ...] = ()
 
 
 def camera_rays(problem: PairProblem, values: np.ndarray, px: np.ndarray, view: int) -> np.ndarray:
@@ -87,10 +70,10 @@ def triangulated(
 
 def poses_from_ties(
     problem: PairProblem, values: np.ndarray
-) -> tuple[np.ndarray, np.ndarray, np.ndarray, list[tuple[np.ndarray, np.ndarray]]]:
+) -> tuple[np.ndarray, np.ndarray, list[tuple[np.ndarray, np.ndarray]]]:
     """Rotations (v, 3, 3) and stations (v, 3), A to B of length one, from the ties.
 
-    returns also the tie rays (n, v, 3) and other poses of B that explain the ties about as well
+    returns also other poses of B (rotation, direction) that explain the ties about as well
     raises  : StartError when the ties do not give a pose
     """
     views = problem.views
@@ -121,7 +104,7 @@ def poses_from_ties(
         if view > 1:
             length = _length_from_shared(directions, rotations, stations, direction, view, both)
         stations[view] = direction * length
-    return rotations, stations, directions, others
+    return rotations, stations, others
 
 
 def _length_from_shared(
