@@ -71,22 +71,19 @@ def distort(ideal: np.ndarray, values: np.ndarray) -> np.ndarray:
     values  : (9,) or (n, 9) card values
     returns : (n, 2)
     """
-    k1, k2, p1, p2, k3 = np.moveaxis(values[..., 4:], -1, 0)
+    k1, k2, p1, p2, k3 = (values[..., i] for i in range(4, 9))
     x, y = ideal[..., 0], ideal[..., 1]
     q = x * x + y * y
     radial = 1.0 + q * (k1 + q * (k2 + q * k3))
-    return np.stack(
-        [
-            x * radial + 2.0 * p1 * x * y + p2 * (q + 2.0 * x * x),
-            y * radial + p1 * (q + 2.0 * y * y) + 2.0 * p2 * x * y,
-        ],
-        axis=-1,
-    )
+    out = np.empty(np.broadcast_shapes(ideal.shape, (*np.shape(k1), 2)))
+    out[..., 0] = x * radial + 2.0 * p1 * x * y + p2 * (q + 2.0 * x * x)
+    out[..., 1] = y * radial + p1 * (q + 2.0 * y * y) + 2.0 * p2 * x * y
+    return out
 
 
 def distort_by_point(ideal: np.ndarray, values: np.ndarray) -> np.ndarray:
     """Jacobian of `distort` with respect to the ideal point, (n, 2, 2)."""
-    k1, k2, p1, p2, k3 = np.moveaxis(values[..., 4:], -1, 0)
+    k1, k2, p1, p2, k3 = (values[..., i] for i in range(4, 9))
     x, y = ideal[..., 0], ideal[..., 1]
     q = x * x + y * y
     radial = 1.0 + q * (k1 + q * (k2 + q * k3))

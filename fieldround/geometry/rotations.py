@@ -69,8 +69,9 @@ def square_basis(direction: np.ndarray) -> np.ndarray:
     a = -1.0 / (sign + z)
     b = x * y * a
     basis = np.empty((*direction.shape, 2))
-    basis[..., 0, 0], basis[..., 1, 0], basis[..., 2, 0] = 1.0 + sign * x * x * a, sign * b, -sign * x
-    basis[..., 0, 1], basis[..., 1, 1], basis[..., 2, 1] = b, sign + y * y * a, -y
+    basis[..., 0, 0], basis[..., 0, 1] = 1.0 + sign * x * x * a, b
+    basis[..., 1, 0], basis[..., 1, 1] = sign * b, sign + y * y * a
+    basis[..., 2, 0], basis[..., 2, 1] = -sign * x, -y
     return basis
 
 

@@ -32,8 +32,8 @@ def _dot(first: np.ndarray, second: np.ndarray) -> np.ndarray:
     return np.einsum("ij,ij->i", first, second)
 
 
-def _cross(first: np.ndarray, second: np.ndarray) -> np.ndarray:
-    # np.cross spends most of its time on checks; this kernel runs in the innermost loop.
+def cross(first: np.ndarray, second: np.ndarray) -> np.ndarray:
+    """Cross products of (n, 3) arrays; np.cross spends most of its time on checks."""
     out = np.empty_like(first)
     out[:, 0] = first[:, 1] * second[:, 2] - first[:, 2] * second[:, 1]
     out[:, 1] = first[:, 2] * second[:, 0] - first[:, 0] * second[:, 2]
@@ -50,7 +50,7 @@ def axis_distance(rays: np.ndarray, axes: np.ndarray, offsets: np.ndarray) -> Ax
     returns : `AxisDistance`; the foot is the signed length from P along a to the foot of the
               common perpendicular
     """
-    m = _cross(rays, axes)
+    m = cross(rays, axes)
     length = np.sqrt(_dot(m, m))
     normal = m / length[:, None]
     distance = _dot(normal, offsets)
@@ -74,8 +74,8 @@ def axis_distance(rays: np.ndarray, axes: np.ndarray, offsets: np.ndarray) -> Ax
         distance,
         foot,
         normal,
-        _cross(g, rays),
-        _cross(axes, g),
+        cross(g, rays),
+        cross(axes, g),
         foot_by_offset,
         foot_by_axis,
         foot_by_ray,
@@ -96,14 +96,11 @@ def centre_distance(rays: np.ndarray, offsets: np.ndarray) -> CentreDistance:
     rays    : (n, 3) directions d of any length; offsets : (n, 3) centre P minus station C
     returns : `CentreDistance`
     """
-    m = _cross(rays, offsets)
+    m = cross(rays, offsets)
     length = np.sqrt(_dot(m, m))
     unit = m / np.where(length > 0.0, length, 1.0)[:, None]
     ray_length = np.sqrt(_dot(rays, rays))
     distance = length / ray_length
-    by_offset = _cross(unit, rays) / ray_length[:, None]
-    by_ray = (
-        _cross(offsets, unit) / ray_length[:, None]
-        - (distance / ray_length**2)[:, None] * rays
-    )
+    by_offset = cross(unit, rays) / ray_length[:, None]
+    by_ray = cross(offsets, unit) / ray_length[:, None] - (distance / ray_length**2)[:, None] * rays
     return CentreDistance(distance, by_offset, by_ray)

@@ -15,6 +15,7 @@ from scipy.stats import chi2
 
 from fieldround.solve.cameras import CameraPriors, free_values, prior_terms, values_moved
 from fieldround.solve.equations import inverse_scaled, solve_scaled
+from fieldround.solve.mark_residuals import limb_block, outline_block
 from fieldround.solve.normals import Reduced, cost_of, reduce_pair
 from fieldround.solve.problem import PairProblem
 from fieldround.solve.state import (
@@ -27,8 +28,10 @@ from fieldround.solve.state import (
 )
 
 ITERATIONS_MOST = 60
-# Stop when the next step would lower the cost by less than this: a millionth of an sd.
+# Stop when the next step would lower the cost by less than this: a millionth of an sd. On the way
+# there, while ties are still being sorted, a hundredth of an sd will do.
 STOP = 1e-13
+STOP_ROUGH = 1e-4
 ROBUST_LIMIT = 2.0
 # A tie further out than this belongs to 1 in 2,000 right ones.
 REJECT_QUANTILE = 0.9995
@@ -86,21 +89,24 @@ def _damped(normal: np.ndarray, damping: float) -> np.ndarray:
 
 
 def adjust_pair(
-    fit: PairFit, values: np.ndarray, priors: CameraPriors, robust: bool
+    fit: PairFit,
+    values: np.ndarray,
+    priors: CameraPriors,
+    robust: bool,
+    stop: float = STOP,
 ) -> tuple[PairFit, np.ndarray, bool]:
     """Adjust one pair with its own copy of its cameras.
 
     values : (m, 9) camera values of the round at the start
     robust : True for the robust tie loss, False for plain least squares over the kept ties
+    stop   : gain of a step, in cost, that ends the iteration
     returns : the fit, the pair's camera values (m, 9), whether it converged
     """
     problem, layout = fit.problem, fit.layout
     limit = ROBUST_LIMIT if robust else None
     ids = list(layout.camera_ids)
     own_priors = CameraPriors(priors.values[ids], priors.sds[ids], priors.heavy[ids])
-    free = np.concatenate(
-        [np.ones(layout.own, dtype=bool), free_values(own_priors).ravel()]
-    )
+    free = np.concatenate([np.ones(layout.own, dtype=bool), free_values(own_priors).ravel()])
     grid = np.ix_(free, free)
     state, values = fit.state, values.copy()
     damping, converged = 1e-4, False
@@ -138,7 +144,7 @@ def adjust_pair(
             state, values = trial, trial_values
             reduced = None
             damping = damping * 0.1 if damping > 1e-12 else 0.0
-            if abs(gain) < STOP * max(1.0, cost) and cost - trial_cost < 1e-9:
+            if abs(gain) < stop * max(1.0, cost) and cost - trial_cost < 1e-9 + stop * cost:
                 converged = True
                 break
         else:
@@ -194,8 +200,6 @@ def keep_right_ties(fit: PairFit, values: np.ndarray) -> tuple[PairFit, np.ndarr
 
 def drop_stray_limbs(fit: PairFit, values: np.ndarray) -> PairFit:
     """Set aside limb and outline marks further than LIMB_REJECT sds from the fitted limbs."""
-    from fieldround.solve.observations import limb_block, outline_block
-
     problem, dropped = fit.problem, 0
     view_values = values[problem.cameras]
     for name, block in (("limbs", limb_block), ("outlines", outline_block)):
@@ -205,7 +209,9 @@ def drop_stray_limbs(fit: PairFit, values: np.ndarray) -> PairFit:
         residuals = block(problem, fit.layout, fit.state, view_values).residuals
         keep = np.abs(residuals) < LIMB_REJECT
         # Two marks a side must stay, or there is no line left to speak of.
-        for key in {(o, v, s) for o, v, s in zip(marks.object, marks.view, marks.side, strict=True)}:
+        for key in {
+            (o, v, s) for o, v, s in zip(marks.object, marks.view, marks.side, strict=True)
+        }:
             same = (marks.object == key[0]) & (marks.view == key[1]) & (marks.side == key[2])
             if (keep & same).sum() < min(3, same.sum()):
                 keep[same] = True
@@ -222,7 +228,7 @@ def settle_pair(
     returns : the fit, the pair's own camera values (m, 9), whether the last adjustment converged
     """
     fit = PairFit(problem, make_layout(problem), start, np.ones(len(start.ties)))
-    fit, own, converged = adjust_pair(fit, values, priors, robust=True)
+    fit, own, converged = adjust_pair(fit, values, priors, True, STOP_ROUGH)
     if len(start.ties):
         for _ in range(2):
             _, squares = cost_of(
@@ -230,7 +236,7 @@ def settle_pair(
             )
             fit = rescaled(fit, robust_tie_factor(fit, squares))
             fit, _ = keep_right_ties(fit, own)
-            fit, own, converged = adjust_pair(fit, own, priors, robust=False)
+            fit, own, converged = adjust_pair(fit, own, priors, False, STOP_ROUGH)
         fit, squares = keep_right_ties(fit, own)
         fit = rescaled(fit, final_tie_factor(fit, squares))
     before = fit.limbs_dropped
@@ -240,9 +246,7 @@ def settle_pair(
     return fit, own, converged
 
 
-def adjust_round(
-    fits: Sequence[PairFit], values: np.ndarray, priors: CameraPriors
-) -> Adjusted:
+def adjust_round(fits: Sequence[PairFit], values: np.ndarray, priors: CameraPriors) -> Adjusted:
     """All pairs together, each already near its minimum.
 
     values : (m, 9) start values of the shared cameras
@@ -278,8 +282,12 @@ def adjust_round(
             trial = replace(fit, state=ties_moved(moved(fit.state, fit.layout, full), tie_steps))
             trials.append(trial)
             trial_cost += cost_of(
-                fit.problem, fit.layout, trial.state, trial_values[fit.problem.cameras],
-                fit.tie_keep, None,
+                fit.problem,
+                fit.layout,
+                trial.state,
+                trial_values[fit.problem.cameras],
+                fit.tie_keep,
+                None,
             )[0]
         if np.isfinite(trial_cost) and trial_cost <= cost * (1.0 + 1e-12):
             fits, values = trials, trial_values
@@ -312,9 +320,7 @@ def eliminated(
     own = layout.own
     corner = _damped(reduced.normal[:own, :own], damping)
     coupling = reduced.normal[:own, own:]
-    solved = solve_scaled(
-        corner, np.concatenate([coupling, -reduced.gradient[:own, None]], axis=1)
-    )
+    solved = solve_scaled(corner, np.concatenate([coupling, -reduced.gradient[:own, None]], axis=1))
     back, forward = solved[:, :-1], solved[:, -1]
     shared = reduced.normal[own:, own:] - coupling.T @ back
     right = -reduced.gradient[own:] - coupling.T @ forward
@@ -348,9 +354,7 @@ def _with_covariances(
         covariance[np.ix_(used, used)] = inverse_scaled(normal[np.ix_(used, used)])
         covariances.append(covariance)
         outside.append(others)
-    return Adjusted(
-        tuple(fits), values, total, tuple(covariances), tuple(reduced), tuple(outside)
-    )
+    return Adjusted(tuple(fits), values, total, tuple(covariances), tuple(reduced), tuple(outside))
 
 
 def _others(

@@ -71,9 +71,7 @@ def departures(priors: CameraPriors, values: np.ndarray) -> np.ndarray:
     return out
 
 
-def prior_terms(
-    priors: CameraPriors, values: np.ndarray
-) -> tuple[np.ndarray, np.ndarray, float]:
+def prior_terms(priors: CameraPriors, values: np.ndarray) -> tuple[np.ndarray, np.ndarray, float]:
     """Diagonal of the prior's normal matrix (m, 9), its gradient (m, 9) and its cost.
 
     Unknowns held fixed get a zero row; `free_values` names the others.

@@ -84,7 +84,9 @@ def _mean(
     if chi > chi2.ppf(DISAGREE_QUANTILE, len(fit) - 1):
         verdict = "remeasure"
         sd *= float(np.sqrt(chi / (len(fit) - 1)))
-        listed = ", ".join(f"{1000 * v:.0f} mm in {s.result.pair}" for v, s in zip(values, fit, strict=True))
+        listed = ", ".join(
+            f"{1000 * v:.0f} mm in {s.result.pair}" for v, s in zip(values, fit, strict=True)
+        )
         reasons.insert(0, f"its pairs disagree ({listed})")
     low, high = interval_95(mean, sd)
     scale = sd**2 / max(sum(best.result.budget.values()), 1e-300)
@@ -109,9 +111,7 @@ def _shared_variance(
     """Covariance of two diameters through the cameras they share."""
 
     def columns(ids: Sequence[int]) -> np.ndarray:
-        return np.concatenate(
-            [np.arange(CAMERA_VALUES * i, CAMERA_VALUES * (i + 1)) for i in ids]
-        )
+        return np.concatenate([np.arange(CAMERA_VALUES * i, CAMERA_VALUES * (i + 1)) for i in ids])
 
     part = camera_covariance[np.ix_(columns(first.camera_ids), columns(second.camera_ids))]
     return float(first.finding.by_camera @ part @ second.finding.by_camera)

@@ -13,8 +13,9 @@ import numpy as np
 
 from fieldround.place.frames import PairFrame
 from fieldround.solve.adjust import Adjusted, PairFit
-from fieldround.solve.observations import limb_block, outline_block, section_radius
+from fieldround.solve.mark_residuals import limb_block, outline_block
 from fieldround.solve.problem import PairProblem
+from fieldround.solve.scalar_residuals import section_radius
 from fieldround.solve.state import ABSENT, Layout, PairState, moved
 
 DIFFERENCE_STEP = 1e-6
@@ -184,8 +185,11 @@ def view_readings(
 
 
 def budget_of(
-    gradient: np.ndarray, covariance: np.ndarray, normals: dict[str, np.ndarray],
-    outside: np.ndarray, own: int,
+    gradient: np.ndarray,
+    covariance: np.ndarray,
+    normals: dict[str, np.ndarray],
+    outside: np.ndarray,
+    own: int,
 ) -> dict[str, float]:
     """Variance of a figure split by source; the parts sum to gradient' C gradient.
 
@@ -204,9 +208,7 @@ def find_objects(adjusted: Adjusted, index: int) -> list[Finding]:
     return [_find(adjusted, index, fit, covariance, k) for k in range(len(fit.problem.objects))]
 
 
-def _find(
-    adjusted: Adjusted, index: int, fit: PairFit, covariance: np.ndarray, k: int
-) -> Finding:
+def _find(adjusted: Adjusted, index: int, fit: PairFit, covariance: np.ndarray, k: int) -> Finding:
     problem, layout, state = fit.problem, fit.layout, fit.state
     thing = problem.objects[k]
     radius, columns = section_radius(problem, layout, state, k)

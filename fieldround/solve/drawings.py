@@ -15,8 +15,8 @@ from fieldround.geometry.touching import axis_distance
 from fieldround.rounds.model import Mark, Photo
 from fieldround.solve.adjust import PairFit
 from fieldround.solve.derive import section_centre
-from fieldround.solve.observations import section_radius
 from fieldround.solve.results import Drawing
+from fieldround.solve.scalar_residuals import section_radius
 from fieldround.solve.start import camera_rays
 from fieldround.solve.state import ABSENT
 
@@ -24,6 +24,9 @@ LIMB_POINTS = 24
 OUTLINE_POINTS = 73
 SECTION_POINTS = 19
 MARGIN_PX = 30.0
+
+Line = tuple[tuple[float, float], ...]
+Lines = tuple[Line, ...]
 
 
 def _line(xy: np.ndarray, size: tuple[int, int]) -> tuple[tuple[float, float], ...]:
@@ -78,8 +81,9 @@ def drawings_of(
             continue
         card, station = values[problem.cameras[view]], state.stations[view]
 
-        def pixels(points: np.ndarray, view: int = view, card: np.ndarray = card,
-                   photo: Photo = photo) -> np.ndarray:
+        def pixels(
+            points: np.ndarray, view: int = view, card: np.ndarray = card, photo: Photo = photo
+        ) -> np.ndarray:
             seen = project((points - state.stations[view]) @ state.rotations[view].T, card)
             return from_card(seen, photo.turn_deg, photo.size_px)
 
@@ -87,16 +91,21 @@ def drawings_of(
         centre = section_centre(problem, fit.layout, state, k)
         if thing.is_ball:
             rays = outline_rays(station, state.points[k], float(state.radii[k]), OUTLINE_POINTS)
-            outline = (_line(pixels(station + rays), photo.size_px),)
-            section: tuple[tuple[float, float], ...] = ()
+            outline: Lines = (_line(pixels(station + rays), photo.size_px),)
+            section: Line = ()
         else:
             heights = _heights(fit, values, k)
             outline = tuple(
                 _line(
                     pixels(
                         limb_points(
-                            station, state.points[k], state.axes[k], float(state.radii[k]),
-                            float(state.tapers[k]), heights, side,
+                            station,
+                            state.points[k],
+                            state.axes[k],
+                            float(state.radii[k]),
+                            float(state.tapers[k]),
+                            heights,
+                            side,
                         )
                     ),
                     photo.size_px,

@@ -11,10 +11,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fieldround.solve.observations import blocks, tie_block
+from fieldround.solve.observations import blocks
 from fieldround.solve.problem import PairProblem
 from fieldround.solve.robust import cauchy
 from fieldround.solve.state import Layout, PairState
+from fieldround.solve.tie_residuals import tie_block
 
 # Keeps the equations of a single tie solvable when no second view fixes its distance.
 TIE_DAMPING = 1e-9
@@ -86,7 +87,8 @@ def reduce_pair(
         gradient += weighted.T @ block.residuals
 
     ties = tie_block(problem, layout, state, values)
-    assert ties.by_tie is not None and ties.by_rest is not None
+    assert ties.by_tie is not None
+    assert ties.by_rest is not None
     squares = np.einsum("ni,ni->n", ties.residuals, ties.residuals)
     if tie_limit is None:
         weights, part = tie_keep, 0.5 * float(squares @ tie_keep)
@@ -121,9 +123,7 @@ def reduce_pair(
         normals["ties"] = normals["ties"] + own if "ties" in normals else own
         normal += own
         gradient[ties.columns] += block_gradient
-    return Reduced(
-        normals, normal, gradient, cost, tie_back, tie_step, ties.columns, squares
-    )
+    return Reduced(normals, normal, gradient, cost, tie_back, tie_step, ties.columns, squares)
 
 
 def cost_of(

@@ -11,7 +11,6 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from fieldround.rounds.errors import RoundError
 from fieldround.solve.adjust import PairFit, eliminated, settle_pair, shared_columns
 from fieldround.solve.assemble import Assembled
 from fieldround.solve.cameras import (
@@ -21,10 +20,10 @@ from fieldround.solve.cameras import (
     prior_terms,
     values_moved,
 )
-from fieldround.solve.fallbacks import parallel_poses
 from fieldround.solve.equations import solve_scaled
+from fieldround.solve.fallbacks import parallel_poses
 from fieldround.solve.normals import cost_of, reduce_pair
-from fieldround.solve.problem import PairProblem
+from fieldround.solve.problem import Marks, PairProblem
 from fieldround.solve.start import (
     StartError,
     ball_start,
@@ -118,15 +117,22 @@ def solve_alone(
                 "the ties lie in one plane or too far away: two positions of the second camera "
                 "explain them equally well; add ties nearer and at other depths"
             )
-    remarks = ()
+    remarks: tuple[str, ...] = ()
     if orientation != "ties":
         remarks = (
             f"only {assembled.ties_found} ties: the cameras were taken as parallel, which is "
             "seldom good enough; mark at least 12 ties by hand",
         )
     return PairStart(
-        best.fit, best.values, best.converged, orientation, assembled.ties_found, best.lost,
-        remarks, tuple(spoilers), best.object_remarks,
+        best.fit,
+        best.values,
+        best.converged,
+        orientation,
+        assembled.ties_found,
+        best.lost,
+        remarks,
+        tuple(spoilers),
+        best.object_remarks,
     )
 
 
@@ -221,7 +227,7 @@ def without_objects(problem: PairProblem, drop: Sequence[int]) -> PairProblem:
     renumber = np.full(len(problem.objects), -1)
     renumber[keep] = np.arange(len(keep))
 
-    def thinned(marks):
+    def thinned(marks: Marks) -> Marks:
         kept = marks.only(renumber[marks.object] >= 0) if len(marks) else marks
         return replace(kept, object=renumber[kept.object]) if len(kept) else kept
 
@@ -243,7 +249,8 @@ def common_start(
     own values lie far from it, in sds, is a stranger: it would spoil the others' cameras.
     returns : pairs to adjust together, their start values (m, 9), pairs to adjust alone
     """
-    together, strangers = list(starts), []
+    together = list(starts)
+    strangers: list[PairStart] = []
     information = {id(s): _camera_information(s) for s in starts}
     while True:
         values = _weighted_values(together, information, priors)

@@ -15,9 +15,9 @@ from fieldround.solve.adjust import Adjusted, PairFit
 from fieldround.solve.derive import Finding, find_objects, vertical_from
 from fieldround.solve.drawings import drawings_of
 from fieldround.solve.intervals import interval_95
-from fieldround.solve.observations import scale_block
 from fieldround.solve.pairwise import PairStart
 from fieldround.solve.results import ObjectResult, PairResult
+from fieldround.solve.scalar_residuals import scale_block
 from fieldround.solve.verdicts import PairFacts, judge
 
 # Two sources of scale contradict each other beyond this many sds of their difference.
@@ -88,9 +88,18 @@ def solved_pair(
     objects = []
     for k, finding in enumerate(findings):
         result = _object_row(
-            round_, listed[finding.name], pair, row, finding, facts, photos,
-            sum(1 for p in pair.photos if any(
-                m.object == finding.name and m.photo == p for m in marks)),
+            round_,
+            listed[finding.name],
+            pair,
+            row,
+            finding,
+            facts,
+            photos,
+            sum(
+                1
+                for p in pair.photos
+                if any(m.object == finding.name and m.photo == p for m in marks)
+            ),
         )
         result = replace(result, drawings=drawings_of(fit, adjusted.values, k, photos, marks))
         objects.append(SolvedObject(finding, result, fit.layout.camera_ids))
@@ -208,8 +217,7 @@ def _object_row(
     if agreement is not None and roundness > 0.0:
         # Two sides of an out-of-round stem differ by up to sqrt(2) * 2 sin(parallax) sds of it.
         spread = (
-            np.sqrt(2.0) * roundness * finding.diameter_m
-            * np.sin(np.radians(finding.parallax_deg))
+            np.sqrt(2.0) * roundness * finding.diameter_m * np.sin(np.radians(finding.parallax_deg))
         )
         difference = finding.readings_m[0] - finding.readings_m[1]
         if agreement != 0.0 and difference != 0.0:

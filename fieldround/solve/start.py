@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from fieldround.geometry.camera import rays
-# from fieldround.geometry.essential import relative_pose
+from fieldround.geometry.essential import relative_pose
 from fieldround.geometry.rotations import square_basis
 from fieldround.geometry.spreads import readings
 from fieldround.geometry.touching import axis_distance
@@ -41,7 +41,7 @@ def triangulated(
     """Ties from their rays in all views: unit direction from A (n, 3) and inverse distance (n,).
 
     directions : (n, v, 3) camera-frame rays, NaN where unseen
-    source     : linear triangulation, R. Hartley and A. Zisserman, Multiple View Geometry (2004), 12.2
+    source     : R. Hartley and A. Zisserman, Multiple View Geometry (2004), 12.2
     """
     scale = float(np.linalg.norm(stations[-1])) or 1.0
     n = len(directions)
@@ -135,9 +135,10 @@ def vertical_start(problem: PairProblem, rotations: np.ndarray) -> np.ndarray:
     if not len(problem.plumb_view):
         return level
     # Plumb normals are square to the vertical; the level cameras settle what they leave free.
-    normals = np.einsum(
-        "pji,pj->pi", rotations[problem.plumb_view], problem.plumb_normal
-    ) / problem.plumb_sd_rad[:, None]
+    normals = (
+        np.einsum("pji,pj->pi", rotations[problem.plumb_view], problem.plumb_normal)
+        / problem.plumb_sd_rad[:, None]
+    )
     system = normals.T @ normals + (np.eye(3) - np.outer(level, level)) / problem.level_sd_rad**2
     up = np.linalg.eigh(system)[1][:, 0]
     return up if up @ level > 0 else -up
@@ -258,8 +259,8 @@ def cylinder_start(
     foot = axis_distance(middle[None], axis[None], (point - station)[None]).foot[0]
     point = point + foot * axis
     distances, radii = [], []
-    for view, both in zip(seen, sides, strict=True):
-        if both < 2:
+    for view, limbs in zip(seen, sides, strict=True):
+        if limbs < 2:
             continue
         mine = _marks_of(problem.limbs, k, view)
         d = camera_rays(problem, values, problem.limbs.px[mine], view) @ rotations[view]
@@ -314,8 +315,14 @@ def settled_sides(
             if abs(upward) > 0.5 and found != expected:
                 turned.append(problem.photos[view])
         if turned:
-            notes.append((thing.name, "left and right were named the wrong way round in "
-                          + " and ".join(turned) + "; the limbs were taken as they lie"))
+            notes.append(
+                (
+                    thing.name,
+                    "left and right were named the wrong way round in "
+                    + " and ".join(turned)
+                    + "; the limbs were taken as they lie",
+                )
+            )
     return replace(problem, limbs=replace(marks, side=side)), tuple(notes)
 
 
@@ -338,7 +345,11 @@ def scaled(problem: PairProblem, stations: np.ndarray, radii: dict[int, float]) 
 
 
 def closed_form_readings(
-    problem: PairProblem, values: np.ndarray, state: PairState, k: int, views: tuple[int, int] = (0, 1)
+    problem: PairProblem,
+    values: np.ndarray,
+    state: PairState,
+    k: int,
+    views: tuple[int, int] = (0, 1),
 ) -> np.ndarray:
     """The two readings of object k by spreads, metres, (2,), NaN where a view has one limb only."""
     pairs = []
@@ -353,9 +364,7 @@ def closed_form_readings(
             centre /= np.linalg.norm(centre)
             half = float(np.mean(np.arcsin(np.linalg.norm(np.cross(d, centre), axis=1))))
             across = square_basis(centre)[:, 0]
-            pairs.append(
-                [np.cos(half) * centre + s * np.sin(half) * across for s in (1.0, -1.0)]
-            )
+            pairs.append([np.cos(half) * centre + s * np.sin(half) * across for s in (1.0, -1.0)])
             continue
         mine = _marks_of(problem.limbs, k, view)
         d = camera_rays(problem, values, problem.limbs.px[mine], view) @ state.rotations[view]

@@ -95,7 +95,7 @@ def judge(
         )
     if finding.limb_factor > LIMB_FACTOR_LIMIT:
         spoilers.append(
-            f"the limb marks scatter {finding.limb_factor ** 0.5:.1f} times as much as their sd "
+            f"the limb marks scatter {finding.limb_factor**0.5:.1f} times as much as their sd "
             "says: check that they lie on the limbs"
         )
     spoilers += _orientation_spoilers(facts)

@@ -34,8 +34,13 @@ def look_at(direction: np.ndarray, roll: float = 0.0) -> np.ndarray:
 
 
 def limb_points(
-    station: np.ndarray, base: np.ndarray, axis: np.ndarray, radius: float, taper: float,
-    heights: np.ndarray, side: float,
+    station: np.ndarray,
+    base: np.ndarray,
+    axis: np.ndarray,
+    radius: float,
+    taper: float,
+    heights: np.ndarray,
+    side: float,
 ) -> np.ndarray:
     """Points on the limb of a cone at given heights, exact tangency, (n, 3)."""
     out = []
@@ -132,7 +137,7 @@ def simulated_pair(
     limb_px = np.array([px for _, px, _ in rows])
     limb_px = limb_px + n * rng.normal(0, mark_sd_px, limb_px.shape)
     view_of = np.array([view for view, _, _ in rows])
-    # Which side is left depends on the frame; the solver settles it. Here: left = +1 by the picture.
+    # Left in the picture is +1, as the sheets would say it.
     side_of = np.array([side for _, _, side in rows])
     for view in range(2):
         mine = view_of == view
@@ -143,16 +148,24 @@ def simulated_pair(
     )
     base_px = np.array([seen(base[None], v)[0] for v in range(2)])
     ends = Marks(
-        np.zeros(2, dtype=int), np.arange(2), base_px + n * rng.normal(0, 1.5, (2, 2)),
-        np.full(2, 1.5), np.zeros(2),
+        np.zeros(2, dtype=int),
+        np.arange(2),
+        base_px + n * rng.normal(0, 1.5, (2, 2)),
+        np.full(2, 1.5),
+        np.zeros(2),
     )
-    thing = SolidObject(
-        "P1", kind, False, np.radians(2.0), -0.004, 0.006, 1.3, has_base=True
-    )
+    thing = SolidObject("P1", kind, False, np.radians(2.0), -0.004, 0.006, 1.3, has_base=True)
     tape = true_length + n * rng.normal(0, tape_sd_m)
     problem = PairProblem(
-        "pair", ("a.jpg", "b.jpg"), np.zeros(2, dtype=int), np.tile([0.0, -1.0, 0.0], (2, 1)),
-        (thing,), ties_px, np.full(ties, tie_sd_px), limbs=limbs, ends=ends,
+        "pair",
+        ("a.jpg", "b.jpg"),
+        np.zeros(2, dtype=int),
+        np.tile([0.0, -1.0, 0.0], (2, 1)),
+        (thing,),
+        ties_px,
+        np.full(ties, tie_sd_px),
+        limbs=limbs,
+        ends=ends,
         lengths=(LengthObservation(tape, tape_sd_m, "tape"),),
     )
     r0 = rotations[0]
@@ -161,9 +174,13 @@ def simulated_pair(
         rotations=np.stack([np.eye(3), rotations[1] @ r0.T]),
         stations=(stations - stations[0]) @ r0.T,
         up=r0 @ axis,
-        ties=np.zeros((ties, 3)), ties_rho=np.zeros(ties),
-        axes=(r0 @ axis)[None], points=points[None],
-        radii=np.array([radius + taper * 1.3]), tapers=np.array([taper]),
-        base=np.array([-1.3]), top=np.array([0.0]),
+        ties=np.zeros((ties, 3)),
+        ties_rho=np.zeros(ties),
+        axes=(r0 @ axis)[None],
+        points=points[None],
+        radii=np.array([radius + taper * 1.3]),
+        tapers=np.array([taper]),
+        base=np.array([-1.3]),
+        top=np.array([0.0]),
     )
     return Truth(problem, state, values, (diameter_m,))
