@@ -16,12 +16,17 @@ WIDTH, HEIGHT = 4000, 3000
 
 @dataclass(frozen=True)
 class Truth:
-    """A simulated pair: what was observed and what is true (frame of camera A)."""
+    """A simulated pair: what was observed and what is true (frame of camera A).
+
+    tie_px : (n, 2, 2) true pixels of the ties; tie_right : (n,) False for the wrong ones
+    """
 
     problem: PairProblem
     state: PairState
     values: np.ndarray
     diameters_m: tuple[float, ...]
+    tie_px: np.ndarray
+    tie_right: np.ndarray
 
 
 def look_at(direction: np.ndarray, roll: float = 0.0) -> np.ndarray:
@@ -109,18 +114,18 @@ def simulated_pair(
         return project((points - stations[view]) @ rotations[view].T, values)
 
     # Ties fill the field of view from half the object's distance to six times it.
-    found_ties: list[np.ndarray] = []
-    while len(found_ties) < ties:
-        depth = distance_m * np.exp(rng.uniform(np.log(0.5), np.log(6.0)))
-        pixel = rng.uniform([50, 50], [WIDTH - 50, HEIGHT - 50])
-        ray = np.array([*((pixel - values[2:4]) / values[:2]), 1.0])
-        point = stations[0] + rotations[0].T @ ray * depth
-        pixels = np.array([seen(point[None], v)[0] for v in range(2)])
-        inside = np.all((pixels > 0) & (pixels < [WIDTH, HEIGHT]))
-        if inside and point[2] > -3.0:
-            found_ties.append(pixels)
-    ties_px = np.array(found_ties).reshape(-1, 2, 2)
-    ties_px = ties_px + n * rng.normal(0, tie_sd_px, ties_px.shape)
+    kept: list[np.ndarray] = []
+    while sum(len(part) for part in kept) < ties:
+        depth = distance_m * np.exp(rng.uniform(np.log(0.5), np.log(6.0), 4 * ties))
+        pixel = rng.uniform([50, 50], [WIDTH - 50, HEIGHT - 50], (4 * ties, 2))
+        ray = np.concatenate([(pixel - values[2:4]) / values[:2], np.ones((4 * ties, 1))], axis=1)
+        point = stations[0] + (ray * depth[:, None]) @ rotations[0]
+        pixels = np.stack([seen(point, 0), seen(point, 1)], axis=1)
+        with np.errstate(invalid="ignore"):
+            inside = np.all((pixels > 0) & (pixels < [WIDTH, HEIGHT]), axis=(1, 2))
+        kept.append(pixels[inside & (point[:, 2] > -3.0)])
+    true_px = np.concatenate(kept)[:ties]
+    ties_px = true_px + n * rng.normal(0, tie_sd_px, true_px.shape)
     bad = rng.random(ties) < wrong
     ties_px[bad, 1] = rng.uniform([0, 0], [WIDTH, HEIGHT], (int(bad.sum()), 2))
 
@@ -183,4 +188,4 @@ def simulated_pair(
         base=np.array([-1.3]),
         top=np.array([0.0]),
     )
-    return Truth(problem, state, values, (diameter_m,))
+    return Truth(problem, state, values, (diameter_m,), true_px, ~bad)
