@@ -60,7 +60,7 @@ def read_cards(path: Path, faults: list[Fault]) -> tuple[Card, ...]:
         return ()
     for section in toml.values:
         if section != "camera":
-            row = toml.row(section) or toml.row("", section)
+            row = toml.row(section)
             remedy = "the file holds [[camera]] sections only"
             remedy += nearest_hint(section, ["camera"])
             faults.append(Fault(toml.name, row, section, None, remedy))

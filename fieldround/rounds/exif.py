@@ -15,10 +15,12 @@ from datetime import datetime
 from pathlib import Path
 from typing import Any, BinaryIO, cast
 
+from fieldround.rounds.errors import PictureError
 from fieldround.rounds.exif_fix import read_direction, read_fix
 from fieldround.rounds.exif_time import read_time
 from fieldround.rounds.exif_values import Tags, number, number_list, text
 from fieldround.rounds.model import Fix
+from fieldround.rounds.picture_files import is_heif, open_picture
 
 # Reads that a garbled directory may cost before it is given up; an ordinary photo takes some 700.
 _MOST_READS = 60_000
@@ -68,14 +70,11 @@ def read_exif(source: bytes | Path) -> ExifFacts:
     source of the tags' meaning: CIPA DC-008 (EXIF 2.32), sections 4.6.4 to 4.6.6
     """
     problems: list[str] = []
-    if isinstance(source, bytes):
-        tags = _tags(io.BytesIO(source), problems)
-    else:
-        try:
-            with source.open("rb") as stream:
-                tags = _tags(stream, problems)
-        except OSError as wrong:
-            return ExifFacts(problems=(f"the file cannot be read ({wrong.strerror or wrong})",))
+    try:
+        with io.BytesIO(source) if isinstance(source, bytes) else source.open("rb") as stream:
+            tags = _tags(stream, problems)
+    except OSError as wrong:
+        return ExifFacts(problems=(f"the file cannot be read ({wrong.strerror or wrong})",))
     fix = _guarded(lambda: read_fix(tags, problems), None, "the GPS position", problems)
     taken_at = _guarded(lambda: read_time(tags, problems), None, "the time", problems)
     direction = _guarded(
@@ -143,6 +142,10 @@ def _tags(stream: BinaryIO, problems: list[str]) -> Tags:
     import exifread
 
     logging.getLogger("exifread").setLevel(logging.CRITICAL)
+    if is_heif(stream.read(12)):
+        # The EXIF library misses the block of many HEIF files; their decoder finds it.
+        stream.seek(0)
+        stream = io.BytesIO(_heif_block(stream.read(), problems))
     try:
         named: Mapping[str, Any] = exifread.process_file(
             cast(BinaryIO, _Metered(stream)), details=False, extract_thumbnail=False
@@ -159,6 +162,16 @@ def _tags(stream: BinaryIO, problems: list[str]) -> Tags:
         for name, tag in named.items()
         if hasattr(tag, "values")
     }
+
+
+def _heif_block(data: bytes, problems: list[str]) -> bytes:
+    """The TIFF block of a HEIF file's EXIF, empty when it has none."""
+    try:
+        block = open_picture(data).info.get("exif") or b""
+    except PictureError as wrong:
+        problems.append(f"the EXIF was not found: {wrong}")
+        return b""
+    return bytes(block).removeprefix(b"Exif\0\0")
 
 
 def _guarded(read: Callable[[], Any], otherwise: Any, what: str, problems: list[str]) -> Any:

@@ -304,7 +304,8 @@ def _named(
 
 
 def _ragged(name: str, row: int, cells: list[str], width: int, separator: str) -> Fault:
-    remedy = f"the line has {len(cells)} cells but the header {width}"
+    count = f"{len(cells)} cell{'s' if len(cells) > 1 else ''}"
+    remedy = f"the line has {count} but the header {width}"
     split = next(
         (
             f"{left},{right}"

@@ -15,7 +15,7 @@ from fieldround.rounds.errors import Fault
 from fieldround.rounds.sheets import read_text
 
 _HEADER = re.compile(r"\s*(\[\[?)\s*([^\[\]]+?)\s*\]\]?\s*(#.*)?")
-_KEY = re.compile(r"\s*(\"[^\"]*\"|'[^']*'|[A-Za-z0-9_-]+)\s*=")
+_KEY = re.compile(r"\s*(?:([A-Za-z0-9_-]+)\s*\.\s*)?(\"[^\"]*\"|'[^']*'|[A-Za-z0-9_-]+)\s*=")
 _AT_LINE = re.compile(r"\s*\(at line (\d+), column \d+\)")
 
 
@@ -28,8 +28,9 @@ class TomlText:
     rows: dict[tuple[str, int, str], int]
 
     def row(self, section: str, key: str = "", which: int = 0) -> int | None:
-        """The line of a key, else of its section, else None."""
-        return self.rows.get((section, which, key), self.rows.get((section, which, "")))
+        """The line of a key, else of its section (or of a key of that name), else None."""
+        places = ((section, which, key), (section, which, ""), ("", 0, section))
+        return next((self.rows[place] for place in places if place in self.rows), None)
 
 
 def read_toml(path: Path, faults: list[Fault]) -> TomlText | None:
@@ -63,5 +64,6 @@ def _rows(text: str) -> dict[tuple[str, int, str], int]:
                 which += 1
             rows[(section, which, "")] = row
         elif key := _KEY.match(line):
-            rows.setdefault((section, which, key[1].strip("\"'")), row)
+            inside = (key[1], 0) if key[1] and not section else (section, which)
+            rows.setdefault((*inside, key[2].strip("\"'")), row)
     return rows
