@@ -1,6 +1,6 @@
 """checks.csv: independent direct measurements of the same objects, by tape or caliper.
 
-In: the sheet and the objects of the round. Out: `Check`s.
+In: the sheet and the objects of the round. Out: `Check`s and notes.
 """
 
 from __future__ import annotations
@@ -19,16 +19,16 @@ REQUIRED = ("object", "diameter_m")
 
 def read_checks(
     path: Path, object_names: Sequence[str] | None, faults: list[Fault]
-) -> tuple[Check, ...]:
-    """Read checks.csv; a missing file means no checks.
+) -> tuple[tuple[Check, ...], tuple[str, ...]]:
+    """Checks, and notes on what was not read; a missing checks.csv means no checks.
 
     object_names : the round's objects, None when they could not be read (nothing is compared)
     """
     if not path.exists():
-        return ()
+        return (), ()
     table = read_table(path, COLUMNS, REQUIRED, faults)
     if table is None:
-        return ()
+        return (), ()
     checks = []
     for row in table.rows:
         name = row.required("object", "the object's name")
@@ -56,4 +56,4 @@ def read_checks(
                     row=row.row,
                 )
             )
-    return tuple(checks)
+    return tuple(checks), table.notes

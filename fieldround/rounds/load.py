@@ -70,7 +70,7 @@ def load_round(folder: Path) -> Round:
     names: Sequence[str] | None = [one.object for one in objects]
     if has_sheet:
         names = listed.names if listed.complete else None
-    checks = read_checks(folder / "checks.csv", names, faults)
+    checks, check_notes = read_checks(folder / "checks.csv", names, faults)
     if faults:
         raise SheetsError(_in_order(faults))
     return Round(
@@ -83,7 +83,7 @@ def load_round(folder: Path) -> Round:
         marks=marks,
         checks=checks,
         lost_photos=lost,
-        notes=(*sheet.notes, *notes),
+        notes=(*sheet.notes, *listed.notes, *marks_sheet.notes, *check_notes, *notes),
     )
 
 

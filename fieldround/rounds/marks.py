@@ -25,9 +25,13 @@ REQUIRED = ("object", "photo", "mark", "x_px", "y_px")
 
 @dataclass(frozen=True)
 class MarksSheet:
-    """The marks of a sheet, each with its row for faults that come to light later."""
+    """The marks of a sheet, each with its row for faults that come to light later.
+
+    notes : sentences about what was not read
+    """
 
     marks: tuple[tuple[Row, Mark], ...]
+    notes: tuple[str, ...] = ()
 
 
 def read_marks_sheet(path: Path, settings: Settings, faults: list[Fault]) -> MarksSheet:
@@ -38,7 +42,7 @@ def read_marks_sheet(path: Path, settings: Settings, faults: list[Fault]) -> Mar
     if table is None:
         return MarksSheet(())
     marks = [(row, _mark(row, settings)) for row in table.rows]
-    return MarksSheet(tuple((row, mark) for row, mark in marks if mark is not None))
+    return MarksSheet(tuple((row, mark) for row, mark in marks if mark is not None), table.notes)
 
 
 def read_marks(path: Path, settings: Settings | None = None) -> tuple[Mark, ...]:

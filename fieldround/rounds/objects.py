@@ -34,11 +34,13 @@ class ObjectsSheet:
     """What objects.csv holds; `names` has every id written, also those of faulty rows.
 
     complete : the sheet exists and has an object column, so that a mark's object must be in it
+    notes    : sentences about what was not read
     """
 
     objects: tuple[RoundObject, ...]
     names: tuple[str, ...]
     complete: bool
+    notes: tuple[str, ...] = ()
 
 
 def read_objects(
@@ -52,7 +54,8 @@ def read_objects(
         return ObjectsSheet((), (), False)
     taken: dict[str, int] = {}
     objects = [_object(row, table, pair_names, settings, taken) for row in table.rows]
-    return ObjectsSheet(tuple(one for one in objects if one is not None), tuple(taken), True)
+    kept = tuple(one for one in objects if one is not None)
+    return ObjectsSheet(kept, tuple(taken), True, table.notes)
 
 
 def objects_from_marks(marks: Iterable[Mark], settings: Settings) -> tuple[RoundObject, ...]:

@@ -59,7 +59,7 @@ def read_pairs(
         tuple(pair for pair in pairs if pair is not None),
         tuple(dict.fromkeys(reader.names)),
         reader.photos,
-        tuple(reader.notes),
+        (*table.notes, *reader.notes),
     )
 
 

@@ -113,6 +113,7 @@ class Table:
 
     columns : known columns it has, extra_columns : the others, each in the order of the header
     missing : required columns it lacks (each already a fault)
+    notes   : sentences on columns that look like a known one but are not
     """
 
     name: str
@@ -120,6 +121,7 @@ class Table:
     extra_columns: tuple[str, ...]
     missing: tuple[str, ...]
     rows: tuple[Row, ...]
+    notes: tuple[str, ...] = ()
 
     def extra(self, row: Row) -> dict[str, str]:
         """The cells of a row that no column of ours claims, in the order of the header."""
@@ -152,10 +154,10 @@ def parse_number(text: str, separator: str = ",") -> float:
     raise ValueError("write a number in digits, without thousands separators")
 
 
-def nearest_hint(value: str, known: Iterable[str]) -> str:
+def nearest_hint(value: str, known: Iterable[str], likeness: float = 0.6) -> str:
     """'; did you mean ...?' with the nearest known word, or nothing when none is near."""
     by_fold = {word.casefold(): word for word in known}
-    near = difflib.get_close_matches(value.casefold(), list(by_fold), n=1, cutoff=0.6)
+    near = difflib.get_close_matches(value.casefold(), list(by_fold), n=1, cutoff=likeness)
     return f"; did you mean {by_fold[near[0]]!r}?" if near else ""
 
 
@@ -236,7 +238,13 @@ def read_table(
         cells = [*cells, *[""] * (len(columns) - len(cells))]
         kept = dict(zip(columns, cells, strict=False))
         rows.append(Row(name, row, kept, separator, faults, ragged))
-    return Table(name, tuple(found), tuple(extra), tuple(missing), tuple(rows))
+    absent = [column for column in known if column not in found and column not in missing]
+    notes = [
+        f"{name}: the column {column!r} is passed through unread{hint}"
+        for column in extra
+        if (hint := nearest_hint(column, absent, 0.75))
+    ]
+    return Table(name, tuple(found), tuple(extra), tuple(missing), tuple(rows), tuple(notes))
 
 
 def _separator_of(text: str, name: str, faults: list[Fault]) -> tuple[str, int]:

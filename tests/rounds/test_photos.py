@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
+import re
 from pathlib import Path
 
 import pytest
@@ -58,9 +60,8 @@ def test_a_name_is_found_exactly_first_then_whatever_its_case(
     ],
 )
 def test_names_that_are_refused(folder: PhotoFolder, written: str, word: str) -> None:
-    with pytest.raises(ValueError, match="") as caught:
+    with pytest.raises(ValueError, match=re.escape(word)):
         folder.find(written)
-    assert word in str(caught.value)
 
 
 @pytest.mark.parametrize(
@@ -163,10 +164,10 @@ def test_bytes_after_the_picture_do_not_matter(tmp_path: Path) -> None:
 
 
 def test_real_samples_are_read_or_lost() -> None:
+    paths = sorted(shared("real", "exif").rglob("*.*"))
     sizes = []
-    for path in sorted(shared("real", "exif").rglob("*.*")):
-        try:
+    for path in paths:
+        with contextlib.suppress(PictureError):
             sizes.append(read_photo(path).size_px)
-        except PictureError as wrong:
-            assert str(wrong)
+    assert len(paths) > 60
     assert len(sizes) > 60

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from pathlib import Path
 
 import numpy as np
@@ -182,12 +183,10 @@ def test_jpegs_decode_as_pil_decodes_them(tmp_path: Path) -> None:
 def test_real_samples_decode_to_the_size_of_their_header() -> None:
     decoded = 0
     for path in sorted(shared("real", "exif").rglob("*.*")):
-        try:
+        with contextlib.suppress(PictureError):
             photo = photo_of(path)
             assert load_picture(photo).shape == (photo.size_px[1], photo.size_px[0], 3)
             decoded += 1
-        except PictureError as wrong:
-            assert str(wrong)
     assert decoded > 60
 
 
