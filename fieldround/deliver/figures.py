@@ -1,0 +1,284 @@
+"""The report's drawings as SVG: readable in black and white, text that can be searched.
+
+In: numbers. Out: SVG elements as safe markup (every word in them is escaped).
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping, Sequence
+
+import numpy as np
+from markupsafe import Markup, escape
+
+from fieldround.deliver.pages import number
+from fieldround.solve.results import BUDGET_SOURCES
+
+# Fill of each budget source: the name of a pattern in report.html.j2.
+_PATTERNS = {source: f"#b{i}" for i, source in enumerate(BUDGET_SOURCES)}
+_SIGNS = {
+    "accept": '<circle r="3.4" class="v-accept"/>',
+    "remeasure": '<path d="M0-4.8L4.6 3.4H-4.6Z" class="v-remeasure"/>',
+    "no result": '<path d="M-3.4-3.4h6.8v6.8h-6.8ZM-3.4-3.4l6.8 6.8M-3.4 3.4l6.8-6.8"'
+    ' class="v-no-result"/>',
+}
+
+
+def sign(verdict: str) -> Markup:
+    """The verdict's sign as a small drawing beside a word."""
+    return Markup(
+        f'<svg class="sign" viewBox="-6 -6 12 12" aria-hidden="true">{_SIGNS[verdict]}</svg>'
+    )
+
+
+def nice_step(span: float, most: int) -> float:
+    """A step of 1, 2 or 5 times a power of ten that cuts `span` into at most `most` parts."""
+    if not span > 0.0:
+        return 1.0
+    ten = 10.0 ** math.floor(math.log10(span / most))
+    return next((k * ten for k in (1, 2, 5, 10) if span / (k * ten) <= most + 1e-9), 10 * ten)
+
+
+def _ticks(low: float, high: float, most: int) -> list[float]:
+    step = nice_step(high - low, most)
+    return [float(t) for t in np.arange(math.ceil(low / step - 1e-9), high / step + 1e-9) * step]
+
+
+def _digits(step: float) -> int:
+    return max(0, -math.floor(math.log10(step) + 1e-9))
+
+
+def readings_scale(
+    readings: Sequence[tuple[str, float, float]],
+    diameter_m: float,
+    low_m: float | None,
+    high_m: float | None,
+) -> Markup:
+    """The views' own readings (view, diameter, sd) above the diameter and its interval."""
+    ends = [v for _, d, sd in readings for v in (d - 2.0 * sd, d + 2.0 * sd)]
+    ends += [v for v in (low_m, high_m, diameter_m) if v is not None]
+    low, high = min(ends), max(ends)
+    room = (high - low) * 0.06 or abs(diameter_m) * 0.01 or 0.001
+    low, high = low - room, high + room
+    left, right = 58.0, 320.0
+
+    def x(value: float) -> float:
+        return left + (value - low) / (high - low) * (right - left)
+
+    rows = [(f"view {view}", d, d - 2.0 * sd, d + 2.0 * sd, False) for view, d, sd in readings]
+    rows.append(
+        (
+            "diameter",
+            diameter_m,
+            diameter_m if low_m is None else low_m,
+            diameter_m if high_m is None else high_m,
+            True,
+        )
+    )
+    parts = []
+    for i, (name, middle, start, end, last) in enumerate(rows):
+        y = 12 + 17 * i
+        kind = "result" if last else "reading"
+        dot = (
+            f'<rect x="{x(middle) - 3:.1f}" y="{y - 3}" width="6" height="6" class="{kind}"/>'
+            if last
+            else f'<circle cx="{x(middle):.1f}" cy="{y}" r="3" class="{kind}"/>'
+        )
+        parts.append(
+            f'<text x="{left - 6}" y="{y + 3.5}" text-anchor="end">{escape(name)}</text>'
+            f'<path d="M{x(start):.1f} {y}H{x(end):.1f}M{x(start):.1f} {y - 4}v8'
+            f'M{x(end):.1f} {y - 4}v8" class="bar {kind}"/>{dot}'
+        )
+    base = 12 + 17 * len(rows) - 4
+    ticks = _ticks(low, high, 5)
+    digits = max(3, _digits(ticks[1] - ticks[0])) if len(ticks) > 1 else 3
+    for tick in ticks:
+        parts.append(
+            f'<path d="M{x(tick):.1f} {base}v4" class="axis"/>'
+            f'<text x="{x(tick):.1f}" y="{base + 14}" text-anchor="middle" class="small">'
+            f"{tick:.{digits}f}</text>"
+        )
+    parts.append(f'<path d="M{left} {base}H{right}" class="axis"/>')
+    return _svg(340, base + 18, parts, "readings", "Readings and diameter on one scale, metres")
+
+
+def budget_bar(budget: Mapping[str, float]) -> Markup:
+    """The variance by source as one bar of patterns, the shares in words below it."""
+    whole = sum(budget.values())
+    if not whole > 0.0:
+        return Markup("")
+    parts, x, width = [], 0.0, 340.0
+    shares = [(source, variance / whole) for source, variance in budget.items() if variance > 0.0]
+    for source, share in shares:
+        fill = _PATTERNS.get(source, "#b0")
+        parts.append(
+            f'<rect x="{x:.1f}" y="0" width="{share * width:.1f}" height="14" '
+            f'style="fill:url({fill})" class="part"/>'
+        )
+        x += share * width
+    key, column = [], 0
+    for source, share in sorted(shares, key=lambda s: -s[1]):
+        if share < 0.005:
+            continue
+        kx, ky = (column % 3) * 114, 22 + 14 * (column // 3)
+        fill = _PATTERNS.get(source, "#b0")
+        key.append(
+            f'<rect x="{kx}" y="{ky}" width="9" height="9" style="fill:url({fill})" class="part"/>'
+            f'<text x="{kx + 13}" y="{ky + 8}" class="small">{escape(source)} '
+            f"{100 * share:.0f} %</text>"
+        )
+        column += 1
+    high = 22 + 14 * ((column + 2) // 3)
+    return _svg(340, high, parts + key, "budget", "Share of each source in the variance")
+
+
+def histogram(
+    values: Iterable[float],
+    title: str,
+    unit: str,
+    limits: Sequence[float] = (),
+    most: int = 16,
+) -> Markup:
+    """Counts of values in equal classes; limits are drawn as dashed lines."""
+    data = np.array([v for v in values if math.isfinite(v)])
+    if not len(data):
+        return Markup("")
+    # A few far values would squeeze all others into one class: they go into the last one.
+    top = float(np.quantile(data, 0.98)) if len(data) > 50 else float(data.max())
+    low, high = float(data.min()), max([top, *limits])
+    low = min([low, *limits]) if limits else low
+    step = nice_step((high - low) or abs(high) * 0.1 or 1.0, most)
+    first = math.floor(low / step + 1e-9)
+    classes = max(1, math.ceil(high / step - 1e-9) - first)
+    index = np.clip(np.floor(data / step + 1e-9).astype(int) - first, 0, classes - 1)
+    counts = np.bincount(index, minlength=classes)
+    left, right, top_y, base = 30.0, 330.0, 22.0, 128.0
+    wide = (right - left) / classes
+    peak = int(counts.max())
+    parts = [f'<text x="0" y="11" class="title">{escape(title)}</text>']
+    for tick in _ticks(0, peak, 4):
+        if tick != int(tick):
+            continue
+        y = base - tick / peak * (base - top_y)
+        parts.append(
+            f'<path d="M{left} {y:.1f}H{right}" class="faint"/>'
+            f'<text x="{left - 4}" y="{y + 3:.1f}" text-anchor="end" class="small">{tick:.0f}</text>'
+        )
+    for i, n in enumerate(counts):
+        high_px = n / peak * (base - top_y)
+        parts.append(
+            f'<rect x="{left + i * wide + 0.5:.1f}" y="{base - high_px:.1f}" '
+            f'width="{max(wide - 1, 0.5):.1f}" height="{high_px:.1f}" class="count"/>'
+        )
+
+    def x(value: float) -> float:
+        return left + (value / step - first) * wide
+
+    every = max(1, math.ceil(classes / 8))
+    for i in range(0, classes + 1, every):
+        more = "≥ " if i + every > classes and float(data.max()) > (first + classes) * step else ""
+        parts.append(
+            f'<text x="{left + i * wide:.1f}" y="{base + 12}" text-anchor="middle" class="small">'
+            f"{more if i == classes else ''}{number((first + i) * step, _digits(step))}</text>"
+        )
+    for limit in limits:
+        parts.append(f'<path d="M{x(limit):.1f} {top_y - 4}V{base}" class="limit"/>')
+    parts.append(
+        f'<path d="M{left} {base}H{right}" class="axis"/>'
+        f'<text x="{right}" y="{base + 25}" text-anchor="end" class="small">{escape(unit)}, '
+        f"n = {len(data)}</text>"
+    )
+    return _svg(340, 158, parts, "plot", title)
+
+
+def dots(rows: Sequence[tuple[str, float]], title: str, unit: str) -> Markup:
+    """One dot a row on a common scale from zero (for a few dozen rows)."""
+    rows = [(name, value) for name, value in rows if math.isfinite(value)]
+    if not rows:
+        return Markup("")
+    left, right = 96.0, 330.0
+    high = max(value for _, value in rows) or 1.0
+    ticks = _ticks(0.0, high * 1.05, 5)
+    parts = [f'<text x="0" y="11" class="title">{escape(title)}</text>']
+    base = 26 + 13 * len(rows)
+    for tick in ticks:
+        x = left + tick / (high * 1.05) * (right - left)
+        parts.append(
+            f'<path d="M{x:.1f} 20V{base}" class="faint"/><text x="{x:.1f}" y="{base + 12}" '
+            f'text-anchor="middle" class="small">{number(tick, _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1)}</text>'
+        )
+    for i, (name, value) in enumerate(rows):
+        y = 30 + 13 * i
+        x = left + value / (high * 1.05) * (right - left)
+        shown = name if len(name) <= 16 else name[:15] + "…"
+        parts.append(
+            f'<text x="{left - 6}" y="{y + 3}" text-anchor="end" class="small">{escape(shown)}</text>'
+            f'<path d="M{left} {y}H{x:.1f}" class="faint"/>'
+            f'<circle cx="{x:.1f}" cy="{y}" r="2.6" class="reading"/>'
+        )
+    parts.append(
+        f'<path d="M{left} {base}H{right}" class="axis"/>'
+        f'<text x="{right}" y="{base + 24}" text-anchor="end" class="small">{escape(unit)}</text>'
+    )
+    return _svg(340, base + 28, parts, "plot", title)
+
+
+def map_sketch(
+    objects: Sequence[tuple[str, str, float, float]],
+    stations: Sequence[tuple[float, float]],
+    sightlines: Sequence[tuple[float, float, float, float]],
+) -> Markup:
+    """The round seen from above, north up.
+
+    objects : (name, verdict, east m, north m); stations : (east, north);
+    sightlines : (east, north, east, north)
+    """
+    spots = np.array([o[2:] for o in objects] + [s for s in stations], float).reshape(-1, 2)
+    if not len(spots):
+        return Markup("")
+    low, high = spots.min(axis=0), spots.max(axis=0)
+    span = float(max(*(high - low), 2.0))
+    wide, tall_most, edge = 680.0, 620.0, 34.0
+    scale = min((wide - 2 * edge) / span, (tall_most - 2 * edge) / max(high[1] - low[1], 1e-9))
+    tall = max(220.0, min(tall_most, (high[1] - low[1]) * scale + 2 * edge))
+    middle = (low + high) / 2.0
+
+    def at(east: float, north: float) -> tuple[float, float]:
+        return wide / 2 + (east - middle[0]) * scale, tall / 2 - (north - middle[1]) * scale
+
+    parts = [f'<rect width="{wide:.0f}" height="{tall:.0f}" class="frame"/>']
+    for x0, y0, x1, y1 in sightlines:
+        (ax, ay), (bx, by) = at(x0, y0), at(x1, y1)
+        parts.append(f'<path d="M{ax:.1f} {ay:.1f}L{bx:.1f} {by:.1f}" class="sight"/>')
+    for east, north in stations:
+        x, y = at(east, north)
+        parts.append(f'<path d="M{x:.1f} {y - 3.6:.1f}l3.4 6h-6.8Z" class="station"/>')
+    boxes: list[tuple[float, float, float, float]] = []
+    names = []
+    for name, verdict, east, north in objects:
+        x, y = at(east, north)
+        parts.append(f'<g transform="translate({x:.1f} {y:.1f})">{_SIGNS[verdict]}</g>')
+        box = (x + 6, y - 6, x + 8 + 5.6 * len(name), y + 5)
+        free = all(box[0] > b[2] or box[2] < b[0] or box[1] > b[3] or box[3] < b[1] for b in boxes)
+        if free and len(names) < 120 and box[2] < wide:
+            boxes.append(box)
+            names.append(
+                f'<text x="{x + 6:.1f}" y="{y + 3.5:.1f}" class="name">{escape(name)}</text>'
+            )
+    length = nice_step(span, 5)
+    x, y = edge, tall - 14
+    parts += names
+    parts.append(
+        f'<path d="M{x} {y - 4}v4h{length * scale:.1f}v-4" class="axis"/>'
+        f'<text x="{x + length * scale + 5:.1f}" y="{y}" class="small">{number(length, _digits(length))} m</text>'
+        f'<path d="M{wide - 26} {34}l-5 12h10ZM{wide - 26} 46v12" class="north"/>'
+        f'<text x="{wide - 26}" y="{28}" text-anchor="middle" class="small">N</text>'
+    )
+    return _svg(wide, tall, parts, "sketch", "Sketch of the round from above, north up")
+
+
+def _svg(width: float, height: float, parts: Sequence[str], kind: str, title: str) -> Markup:
+    return Markup(
+        f'<svg class="{kind}" viewBox="0 0 {width:.0f} {height:.0f}" role="img" '
+        f'aria-label="{escape(title)}">{"".join(parts)}</svg>'
+    )

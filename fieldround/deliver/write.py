@@ -1,0 +1,112 @@
+"""All results of a round, written so that the old ones stay whole until the new ones are.
+
+In: a `RoundResult`, the folder out/, and a way to see the photos. Out: the files of out/.
+"""
+
+from __future__ import annotations
+
+import shutil
+import tempfile
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from fieldround import __version__
+from fieldround.rounds.errors import RoundError
+from fieldround.solve.results import RoundResult
+
+PictureSource = Callable[[str], np.ndarray]
+_NO_TIME = "1970-01-01T00:00:00.000Z"
+
+
+class WriteError(RoundError):
+    """The results could not be written; those of the run before are still there."""
+
+
+def write_results(
+    result: RoundResult, out_dir: Path, pictures: PictureSource | None = None
+) -> list[Path]:
+    """Write every file of out/ and return their paths.
+
+    pictures : gives the upright (h, w, 3) uint8 RGB picture of a photo's name; None = no crops
+    raises   : WriteError when a file of the run before is held open by another program
+    """
+    out_dir.mkdir(parents=True, exist_ok=True)
+    beside = Path(tempfile.mkdtemp(prefix=".writing-", dir=out_dir))
+    try:
+        made = _write_all(result, out_dir, beside, pictures)
+        return [_move(path, out_dir / path.name) for path in made]
+    finally:
+        shutil.rmtree(beside, ignore_errors=True)
+
+
+def _write_all(
+    result: RoundResult, out_dir: Path, beside: Path, pictures: PictureSource | None
+) -> list[Path]:
+    from fieldround.deliver.crops import cut_crops
+    from fieldround.deliver.facts import write_facts
+    from fieldround.deliver.geojson import write_geojson
+    from fieldround.deliver.geopackage import srs_of, write_geopackage
+    from fieldround.deliver.layers import build_layers, coordinates, time_span
+    from fieldround.deliver.map_page import write_map
+    from fieldround.deliver.report import write_report
+    from fieldround.deliver.sheet import write_sheet
+
+    layers = build_layers(result, out_dir)
+    places = coordinates(result)
+    placement = result.placement
+    # The GeoPackage comes first: it is the one another program most likely holds open.
+    names = ("results.gpkg", "results.csv", "results.geojson", "run.json", "map.html")
+    paths = [beside / name for name in (*names, "report.html")]
+    write_geopackage(
+        paths[0],
+        layers,
+        srs_of(
+            None if placement is None else placement.crs_wkt,
+            None if placement is None else placement.epsg,
+        ),
+        time_span(result)[1] or _NO_TIME,
+        _about(result),
+    )
+    write_sheet(paths[1], layers["objects"], places)
+    write_geojson(paths[2], layers["objects"], places)
+    write_facts(paths[3], result)
+    crops = cut_crops(result, pictures)
+    write_map(paths[4], result, layers, crops)
+    write_report(paths[5], result, layers, crops)
+    return paths
+
+
+def _about(result: RoundResult) -> dict[str, Any]:
+    """What the metadata extension says of the file as a whole."""
+    return {
+        "program": f"fieldround {__version__}",
+        "title": result.round.settings.title,
+        "method": [
+            "Diameters from the limbs of round objects in photos from two or more stations, "
+            "adjusted jointly with ties, baseline, camera card and uprightness by least squares.",
+            "Standard deviations by propagation of variances (JCGM 100); intervals are 95 %.",
+            "Positions from GNSS of the photos, refined within each pair; ellipses are 95 %.",
+        ],
+        "lengths": "metre",
+        "angles": "degree, bearings clockwise from true north",
+        "times": "UTC; a time whose offset is not known stands in taken_local alone",
+        "wgs84": "longitude and latitude of the sheet and the GeoJSON are WGS 84",
+    }
+
+
+def _move(path: Path, target: Path) -> Path:
+    try:
+        path.replace(target)
+        if target.suffix == ".gpkg":
+            # A log that a reader left beside the OLD file would be replayed into the new one.
+            for end in ("-wal", "-shm", "-journal"):
+                target.with_name(target.name + end).unlink(missing_ok=True)
+    except PermissionError as error:
+        raise WriteError(
+            f"{target.name} in {target.parent} cannot be replaced: another program holds it "
+            "open. Close that program and run again."
+        ) from error
+    return target
