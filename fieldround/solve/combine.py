@@ -12,7 +12,7 @@ import numpy as np
 from scipy.stats import chi2
 
 from fieldround.rounds.model import Round, RoundObject
-from fieldround.solve.intervals import interval_95
+from fieldround.solve.intervals import linear_interval
 from fieldround.solve.results import ObjectResult, PairResult
 from fieldround.solve.rows import SolvedObject, SolvedPair
 from fieldround.solve.state import CAMERA_VALUES
@@ -88,7 +88,7 @@ def _mean(
             f"{1000 * v:.0f} mm in {s.result.pair}" for v, s in zip(values, fit, strict=True)
         )
         reasons.insert(0, f"its pairs disagree ({listed})")
-    low, high = interval_95(mean, sd)
+    low, high = linear_interval(mean, sd)
     scale = sd**2 / max(sum(best.result.budget.values()), 1e-300)
     return replace(
         best.result,

@@ -33,6 +33,8 @@ class Finding:
     readings_m, reading_sd_m : by view, in the order of `reading_views`
     agreement      : first view's reading minus the others', in sds of that difference
     limb_factor    : residuals of the limb marks against their sds (1 = as stated)
+    observables, observables_cov : (4,), (4, 4) log of the baseline, angle at A, parallax, log of
+                     sin(half the visible angle at A), all in the plane of the section
     parallax_deg, parallax_sd_deg : angle between the sight lines A and B to the section
     """
 
@@ -59,6 +61,8 @@ class Finding:
     parallax_sd_deg: float
     limb_factor: float
     limb_marks: int
+    observables: np.ndarray
+    observables_cov: np.ndarray
 
 
 def gradient_of(
@@ -227,18 +231,18 @@ def _find(adjusted: Adjusted, index: int, fit: PairFit, covariance: np.ndarray, 
     views = _views_of(problem, k)
     stations = [0, 1] if len(views) < 2 else views[:2]
 
-    def sights(s: PairState) -> np.ndarray:
-        lines = section_centre(problem, layout, s, k) - s.stations[stations]
-        if not thing.is_ball:
-            lines = lines - (lines @ s.axes[k])[:, None] * s.axes[k]
-        sine = np.linalg.norm(np.cross(lines[0], lines[1]))
-        return np.array([np.arctan2(sine, lines[0] @ lines[1])])
+    def observables(s: PairState) -> np.ndarray:
+        return triangle_observables(problem, layout, s, k, stations)
 
     def lean(s: PairState) -> np.ndarray:
         return (levelled(s) @ s.axes[k])[:2]
 
-    parallax_gradient = gradient_of(sights, state, layout)
-    parallax_var = (parallax_gradient @ covariance @ parallax_gradient.T)[0, 0]
+    triangle = observables(state)
+    triangle_gradient = gradient_of(observables, state, layout)
+    triangle_cov = triangle_gradient @ covariance @ triangle_gradient.T
+    # What widened the linear sd (marks that scatter, fewer votes) widens the triangle alike.
+    stretch = sd**2 / max(float(gradient @ covariance @ gradient), 1e-300)
+    triangle_cov = triangle_cov * max(1.0, stretch)
     centre = section_centre(problem, layout, state, k)
     lean_deg = lean_sd = lean_to = None
     if not thing.is_ball:
@@ -282,10 +286,44 @@ def _find(adjusted: Adjusted, index: int, fit: PairFit, covariance: np.ndarray, 
         lean_sd_deg=lean_sd,
         lean_frame_deg=lean_to,
         ranges_m=tuple(float(np.linalg.norm(centre - s)) for s in state.stations),
-        parallax_deg=float(np.degrees(sights(state)[0])),
-        parallax_sd_deg=float(np.degrees(np.sqrt(max(parallax_var, 0.0)))),
+        parallax_deg=float(np.degrees(triangle[2])),
+        parallax_sd_deg=float(np.degrees(np.sqrt(max(triangle_cov[2, 2], 0.0)))),
         limb_factor=factor,
         limb_marks=count,
+        observables=triangle,
+        observables_cov=triangle_cov,
+    )
+
+
+def triangle_observables(
+    problem: PairProblem, layout: Layout, state: PairState, k: int, stations: list[int]
+) -> np.ndarray:
+    """Log baseline, angle at A, parallax, log sin(half visible angle at A) of object k, (4,).
+
+    For a cylinder all of them lie in the plane square to its axis.
+    """
+    thing = problem.objects[k]
+    lines = section_centre(problem, layout, state, k) - state.stations[stations]
+    base = state.stations[stations[1]] - state.stations[stations[0]]
+    if not thing.is_ball:
+        axis = state.axes[k]
+        lines = lines - (lines @ axis)[:, None] * axis
+        base = base - (base @ axis) * axis
+    radius, _ = section_radius(problem, layout, state, k)
+    to_a, to_b = lines
+
+    def angle(first: np.ndarray, second: np.ndarray) -> float:
+        return float(np.arctan2(np.linalg.norm(np.cross(first, second)), first @ second))
+
+    # The parallax keeps its sign when a step carries the meeting point behind the stations.
+    turn = float(np.sign(np.cross(base, to_a) @ np.cross(to_a, to_b))) or 1.0
+    return np.array(
+        [
+            np.log(np.linalg.norm(base)),
+            angle(base, to_a),
+            turn * angle(to_a, to_b),
+            np.log(radius / np.linalg.norm(to_a)),
+        ]
     )
 
 

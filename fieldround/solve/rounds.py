@@ -95,7 +95,7 @@ def solve_round(
             continue
         start, end, index = ended[pair.pair]
         told = [remarks[i] for i in start.fit.layout.camera_ids if i in remarks]
-        solved[pair.pair] = solved_pair(round_, pair, start, end, index, marks, told)
+        solved[pair.pair] = solved_pair(round_, pair, start, end, index, marks, told, draws)
         frames.append(pair_frame(end, index))
     objects, chosen = combined_objects(round_, solved, refused, lost, covariance)
     leans = {

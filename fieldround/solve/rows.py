@@ -14,7 +14,7 @@ from fieldround.rounds.model import Mark, Pair, Photo, Round, RoundObject
 from fieldround.solve.adjust import Adjusted, PairFit
 from fieldround.solve.derive import Finding, find_objects, vertical_from
 from fieldround.solve.drawings import drawings_of
-from fieldround.solve.intervals import interval_95
+from fieldround.solve.intervals import diameter_interval
 from fieldround.solve.pairwise import PairStart
 from fieldround.solve.results import ObjectResult, PairResult
 from fieldround.solve.scalar_residuals import scale_block
@@ -54,11 +54,13 @@ def solved_pair(
     index: int,
     marks: Sequence[Mark],
     camera_remarks: Sequence[str],
+    draws: int | None = None,
 ) -> SolvedPair:
     """Rows of one pair after the adjustment.
 
     index          : of the pair in `adjusted`
     camera_remarks : sentences about its cameras
+    draws          : Monte Carlo draws asked for, None = only where the linear result is suspect
     """
     fit = adjusted.fits[index]
     findings = find_objects(adjusted, index)
@@ -95,11 +97,8 @@ def solved_pair(
             finding,
             facts,
             photos,
-            sum(
-                1
-                for p in pair.photos
-                if any(m.object == finding.name and m.photo == p for m in marks)
-            ),
+            len({m.photo for m in marks if m.object == finding.name} & set(pair.photos)),
+            draws,
         )
         result = replace(result, drawings=drawings_of(fit, adjusted.values, k, photos, marks))
         objects.append(SolvedObject(finding, result, fit.layout.camera_ids))
@@ -205,6 +204,7 @@ def _object_row(
     facts: PairFacts,
     photos: Sequence[Photo],
     views: int,
+    draws: int | None,
 ) -> ObjectResult:
     budget = dict(finding.budget)
     roundness = 0.01 * round_.settings.roundness_pct.get(thing.kind, 0.0)
@@ -212,7 +212,6 @@ def _object_row(
         # One pair sees one side: the mean diameter differs from the width it sees.
         budget["roundness"] = (roundness * finding.diameter_m) ** 2
     sd = float(np.sqrt(max(sum(budget.values()), 0.0)))
-    interval = interval_95(finding.diameter_m, sd)
     agreement = finding.agreement
     if agreement is not None and roundness > 0.0:
         # Two sides of an out-of-round stem differ by up to sqrt(2) * 2 sin(parallax) sds of it.
@@ -224,6 +223,7 @@ def _object_row(
             plain = abs(difference / agreement)
             agreement = float(difference / np.hypot(plain, spread))
     finding = replace(finding, budget=budget, diameter_sd_m=sd, agreement=agreement)
+    interval = diameter_interval(finding, pair.pair, roundness, draws)
     verdict, reasons = judge(finding, interval, facts, round_.settings)
     has_readings = len(finding.readings_m) >= 2
     return ObjectResult(

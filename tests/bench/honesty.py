@@ -26,7 +26,7 @@ from fieldround.solve.assemble import Assembled
 from fieldround.solve.cameras import camera_priors, free_values, prior_terms
 from fieldround.solve.derive import find_objects
 from fieldround.solve.equations import inverse_scaled
-from fieldround.solve.intervals import interval_95
+from fieldround.solve.intervals import diameter_interval
 from fieldround.solve.normals import reduce_pair
 from fieldround.solve.pairwise import PairStart, solve_alone
 from fieldround.solve.scalar_residuals import section_radius
@@ -150,10 +150,10 @@ def random_case(seed: int) -> Case:
         found.remarks,
         found.spoilers,
     )
-    low, high = interval_95(finding.diameter_m, finding.diameter_sd_m)
+    low, high = diameter_interval(finding, "pair")
     verdict, reasons = judge(finding, (low, high), facts, Settings())
     true = truth.diameters_m[0]
-    narrow = interval_95(finding.diameter_m, finding.diameter_sd_m, level=0.6827)
+    narrow = diameter_interval(finding, "pair", level=0.6827)
     return Case(
         *shape,
         verdict,
