@@ -107,6 +107,7 @@ def undistort(distorted: np.ndarray, values: np.ndarray) -> np.ndarray:
     ideal = distorted.copy()
     if not np.any(values[..., 4:]):
         return ideal
+    determinant = np.ones(ideal.shape[:-1])
     for _ in range(NEWTON_MOST):
         miss = distort(ideal, values) - distorted
         largest = np.max(np.abs(miss)) if miss.size else 0.0
@@ -115,9 +116,13 @@ def undistort(distorted: np.ndarray, values: np.ndarray) -> np.ndarray:
         ideal[..., 0] -= (j[..., 1, 1] * miss[..., 0] - j[..., 0, 1] * miss[..., 1]) / determinant
         ideal[..., 1] -= (j[..., 0, 0] * miss[..., 1] - j[..., 1, 0] * miss[..., 0]) / determinant
         if largest < NEWTON_TOLERANCE:
-            return ideal
+            break
     miss = np.max(np.abs(distort(ideal, values) - distorted), axis=-1)
-    ideal[~(miss < 1e3 * NEWTON_TOLERANCE)] = np.nan
+    # Beyond its fold a distortion has other solutions, mirrored or turned inside out.
+    same_side = np.einsum("...i,...i->...", ideal, distorted) >= 0.0
+    found = (miss < 1e3 * NEWTON_TOLERANCE) & same_side & (determinant > 0.0)
+    if not found.all():
+        ideal[~found] = np.nan
     return ideal
 
 
