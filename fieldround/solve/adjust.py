@@ -38,6 +38,8 @@ REJECT_QUANTILE = 0.9995
 # Residuals speak with this many votes against the stated sds (inverse-gamma shrinkage).
 FACTOR_VOTES = 10.0
 LIMB_REJECT = 4.0
+# No tie is found better than this, however well its neighbours fit.
+TIE_SD_FLOOR_PX = 0.03
 
 
 @dataclass(frozen=True)
@@ -49,7 +51,6 @@ class PairFit:
     state: PairState
     tie_keep: np.ndarray
     limbs_dropped: int = 0
-    tie_factor: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -158,9 +159,9 @@ def adjust_pair(
 
 
 def rescaled(fit: PairFit, factor: float) -> PairFit:
-    """The fit with the sds of its ties multiplied by a factor."""
-    problem = replace(fit.problem, ties_sd_px=fit.problem.ties_sd_px * factor)
-    return replace(fit, problem=problem, tie_factor=fit.tie_factor * factor)
+    """The fit with the sds of its ties multiplied by a factor, down to a floor."""
+    sds = np.maximum(fit.problem.ties_sd_px * factor, TIE_SD_FLOOR_PX)
+    return replace(fit, problem=replace(fit.problem, ties_sd_px=sds))
 
 
 def robust_tie_factor(fit: PairFit, squares: np.ndarray) -> float:

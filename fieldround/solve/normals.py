@@ -18,7 +18,7 @@ from fieldround.solve.state import Layout, PairState
 from fieldround.solve.tie_residuals import tie_block
 
 # Keeps the equations of a single tie solvable when no second view fixes its distance.
-TIE_DAMPING = 1e-9
+TIE_DAMPING = 1e-12
 
 
 @dataclass(frozen=True)

@@ -270,7 +270,7 @@ def common_start(
                 worst, worst_size = s, size
         if worst is None:
             return together, values, strangers
-        together.remove(worst)
+        together = [s for s in together if s is not worst]
         strangers.append(
             replace(
                 worst,

@@ -137,11 +137,17 @@ def expectation_block(problem: PairProblem, layout: Layout, state: PairState) ->
         if thing.ground_guess and layout.base[k] != ABSENT:
             # A is the origin: the ground line lies CAMERA_HEIGHT_M below it along the vertical.
             ground = state.points[k] + state.base[k] * state.axes[k]
+            basis = square_basis(state.axes[k])
             sd = CAMERA_HEIGHT_SD_M
             entries.append(
                 (
                     (float(ground @ state.up) + CAMERA_HEIGHT_M) / sd,
-                    {int(layout.base[k]): float(state.axes[k] @ state.up) / sd},
+                    {
+                        int(layout.base[k]): float(state.axes[k] @ state.up) / sd,
+                        int(layout.point[k]): state.up @ basis / sd,
+                        int(layout.axis[k]): state.base[k] * (state.up @ basis) / sd,
+                        layout.up: ground @ square_basis(state.up) / sd,
+                    },
                 )
             )
     return _block("taper", entries, layout.size, plain)

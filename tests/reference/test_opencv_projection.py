@@ -28,7 +28,7 @@ def test_pixels_to_ideal_is_undistortpoints_iterated_to_its_end():
     rng = np.random.default_rng(2)
     pixels = rng.uniform([200, 200], [3800, 2800], (200, 2))
     criteria = (cv2.TERM_CRITERIA_COUNT | cv2.TERM_CRITERIA_EPS, 100, 1e-14)
-    theirs = cv2.undistortPointsIter(pixels[:, None], MATRIX, VALUES[4:], None, None, criteria)
+    theirs = cv2.undistortPoints(pixels[:, None], MATRIX, VALUES[4:], criteria=criteria)
     assert np.allclose(pixels_to_ideal(pixels, VALUES), theirs[:, 0], atol=1e-9)
 
 
