@@ -1,1 +1,1 @@
-"""The order of the work."""
+"""The order of the work on a round: no mathematics and no file formats."""

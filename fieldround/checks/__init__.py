@@ -1,0 +1,1 @@
+"""Checks: found figures beside independent direct measurements."""
