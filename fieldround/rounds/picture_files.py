@@ -54,10 +54,10 @@ def open_picture(data: bytes) -> Any:
                     picture = Image.open(io.BytesIO(data), formats=FORMATS)
                 finally:
                     Image.MAX_IMAGE_PIXELS = limit
+        width, height = picture.size
     except Exception as wrong:
         # Decoders raise whatever a garbled header trips them over.
         raise PictureError(_unreadable(wrong)) from None
-    width, height = picture.size
     if width < 16 or height < 16 or width * height > MOST_PIXELS:
         raise PictureError(f"a picture of {width} x {height} pixels cannot be a photo")
     return picture
