@@ -25,7 +25,7 @@ FOCAL_MATCH = 0.02
 FOCAL_SD = 0.01
 
 _TEXT_KEYS = ("name", "make", "model", "lens")
-_KEYS = (
+KEYS = (
     *_TEXT_KEYS, "focal_mm", "digital_zoom", "size_px", "focal_px", "focal_sd_px", "centre_px",
     "centre_sd_px", "distortion", "distortion_sd", "ratio_sd",
 )  # fmt: skip
@@ -243,8 +243,8 @@ class _CardReader:
     def camera(self) -> Camera | None:
         """The card, None when anything in it is wrong."""
         for key in self.table:
-            if key not in _KEYS:
-                remedy = f"the keys of a card are {', '.join(_KEYS)}{nearest_hint(key, _KEYS)}"
+            if key not in KEYS:
+                remedy = f"the keys of a card are {', '.join(KEYS)}{nearest_hint(key, KEYS)}"
                 self.fault(key, remedy)
         for key in ("size_px", "focal_px"):
             if key not in self.table:

@@ -70,9 +70,9 @@ def size_of(data: bytes) -> tuple[int, int]:
     """
     picture = open_picture(data)
     width, height = picture.size
-    if getattr(picture, "format", None) == "TIFF" and _tiff_turned(picture):
-        # PIL already swaps the size of a turned TIFF.
-        width, height = height, width
+    if getattr(picture, "format", None) == "TIFF":
+        # PIL gives the size of a turned TIFF already swapped, but not in all its versions.
+        width, height = picture.tag_v2[0x0100], picture.tag_v2[0x0101]
     return int(width), int(height)
 
 
@@ -99,10 +99,6 @@ def _jpeg_scan(data: bytes) -> int:
             if marker == 0xDA:
                 return place
     return min(place, len(data))
-
-
-def _tiff_turned(picture: Any) -> bool:
-    return bool(picture.tag_v2.get(0x0112, 1) in (5, 6, 7, 8))
 
 
 def _unreadable(wrong: Exception) -> str:

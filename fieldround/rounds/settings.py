@@ -32,17 +32,17 @@ def read_settings(path: Path, faults: list[Fault]) -> Settings:
     found: dict[str, Any] = {}
     roundness = dict(Settings().roundness_pct)
     for section, keys in toml.values.items():
-        if section not in _SECTIONS or not isinstance(keys, dict):
+        if section not in SECTIONS or not isinstance(keys, dict):
             _unknown_section(toml, section, keys, faults)
             continue
         for key, value in keys.items():
             row = toml.row(section, key)
             if section == "roundness":
                 _roundness(toml, row, key, value, roundness, faults)
-            elif key not in _SECTIONS[section]:
+            elif key not in SECTIONS[section]:
                 faults.append(_unknown_key(toml, row, section, key, value))
             else:
-                field, judge = _SECTIONS[section][key]
+                field, judge = SECTIONS[section][key]
                 try:
                     found[field] = judge(value)
                 except ValueError as wrong:
@@ -113,7 +113,7 @@ def _count(value: Any) -> int:
     return value
 
 
-_SECTIONS: dict[str, dict[str, tuple[str, Callable[[Any], Any]]]] = {
+SECTIONS: dict[str, dict[str, tuple[str, Callable[[Any], Any]]]] = {
     "round": {
         "title": ("title", _text),
         "crew": ("crew", _text),
@@ -151,11 +151,11 @@ def _roundness(
 
 
 def _unknown_section(toml: TomlText, section: str, value: Any, faults: list[Fault]) -> None:
-    if section in _SECTIONS:
+    if section in SECTIONS:
         remedy = f"write this once, as a section [{section}] with its keys below it"
     elif isinstance(value, dict | list):
-        remedy = f"the sections are {', '.join(f'[{name}]' for name in _SECTIONS)}"
-        remedy += nearest_hint(section, _SECTIONS)
+        remedy = f"the sections are {', '.join(f'[{name}]' for name in SECTIONS)}"
+        remedy += nearest_hint(section, SECTIONS)
     else:
         row = toml.row("", section)
         faults.append(_unknown_key(toml, row, "", section, value))
@@ -164,13 +164,13 @@ def _unknown_section(toml: TomlText, section: str, value: Any, faults: list[Faul
 
 
 def _unknown_key(toml: TomlText, row: int | None, section: str, key: str, value: Any) -> Fault:
-    homes = [name for name, keys in _SECTIONS.items() if key in keys]
+    homes = [name for name, keys in SECTIONS.items() if key in keys]
     if homes:
         remedy = f"this key belongs under [{homes[0]}]"
     elif section:
-        known = _SECTIONS[section]
+        known = SECTIONS[section]
         remedy = f"the keys of [{section}] are {', '.join(known)}{nearest_hint(key, known)}"
     else:
-        every = [f"{name}.{key_name}" for name, keys in _SECTIONS.items() for key_name in keys]
+        every = [f"{name}.{key_name}" for name, keys in SECTIONS.items() for key_name in keys]
         remedy = f"no such key; the keys are {', '.join(every)}"
     return Fault(toml.name, row, key, str(value), remedy)
