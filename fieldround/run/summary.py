@@ -8,6 +8,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from pathlib import Path
+from typing import Literal
 
 from rich.console import Console
 from rich.table import Table
@@ -18,6 +19,7 @@ from fieldround.solve.results import VERDICTS, ObjectResult, RoundResult
 # Beyond this many objects only those that are not accepted are listed.
 LISTED_MOST = 60
 WIDEST = 100
+NAME_WIDEST = 16
 _STYLES = {"accept": "green", "remeasure": "yellow", "no result": "red"}
 
 
@@ -27,26 +29,36 @@ def print_summary(result: RoundResult, out_dir: Path, console: Console) -> None:
     if len(listed) > LISTED_MOST:
         listed = [thing for thing in listed if thing.verdict != "accept"]
     if listed:
-        console.print(objects_table(listed), width=min(console.width, WIDEST))
+        console.print(objects_table(listed, min(console.width, WIDEST)))
         console.print()
     for line in closing_lines(result, len(listed), out_dir):
         console.print(Text(line), soft_wrap=True)
 
 
-def objects_table(objects: list[ObjectResult]) -> Table:
-    """One row an object: diameter, sd and interval in millimetres, verdict, first reason."""
+def objects_table(objects: list[ObjectResult], width: int) -> Table:
+    """One row an object: diameter, sd and interval in millimetres, verdict, first reason.
+
+    The figures keep their width; what a narrow terminal cuts off is the reason.
+    """
     table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0))
-    table.add_column("object", overflow="ellipsis", no_wrap=True, max_width=18)
-    table.add_column("kind", no_wrap=True)
-    table.add_column("diameter ± sd, mm", justify="right", no_wrap=True)
-    table.add_column("95 % interval", justify="right", no_wrap=True)
-    table.add_column("verdict", no_wrap=True)
-    table.add_column("first reason", ratio=1, overflow="ellipsis", no_wrap=True)
-    for thing in objects:
+    rows = [(_cut(thing.object), thing.kind, *figures(thing), thing.verdict) for thing in objects]
+    names = ("object", "kind", "diameter ± sd, mm", "95 % interval", "verdict")
+    left = width
+    for i, name in enumerate(names):
+        wide = max(len(name), *(len(row[i]) for row in rows))
+        justify: Literal["left", "right"] = "right" if i in (2, 3) else "left"
+        table.add_column(name, justify=justify, no_wrap=True, width=wide)
+        left -= wide + 2
+    table.add_column("first reason", no_wrap=True, overflow="ellipsis", width=max(left - 2, 1))
+    for thing, row in zip(objects, rows, strict=True):
         verdict = Text(thing.verdict, style=_STYLES.get(thing.verdict, ""))
-        reason = thing.reasons[0] if thing.reasons else ""
-        table.add_row(Text(thing.object), thing.kind, *figures(thing), verdict, Text(reason))
+        reason = Text(thing.reasons[0] if thing.reasons else "")
+        table.add_row(*(Text(cell) for cell in row[:-1]), verdict, reason)
     return table
+
+
+def _cut(name: str) -> str:
+    return name if len(name) <= NAME_WIDEST else name[: NAME_WIDEST - 1] + "…"
 
 
 def figures(thing: ObjectResult) -> tuple[str, str]:
