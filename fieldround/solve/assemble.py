@@ -200,7 +200,8 @@ def _all_ties(
 ) -> tuple[np.ndarray, np.ndarray]:
     """Found ties and hand ties in card pixels, (n, v, 2), and their sds, (n,)."""
     views = len(pair.photos)
-    blocks, sds = [], []
+    blocks: list[np.ndarray] = []
+    sds: list[np.ndarray] = []
     if ties is not None and len(ties.xy_px):
         turned = np.full(ties.xy_px.shape, np.nan)
         for view, name in enumerate(pair.photos):
