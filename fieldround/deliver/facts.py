@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 
 from fieldround import __version__
-from fieldround.deliver.layers import time_span
+from fieldround.deliver.times import time_span
 from fieldround.rounds.model import KINDS
 from fieldround.solve.results import VERDICTS, RoundResult
 

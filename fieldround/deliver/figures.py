@@ -16,6 +16,8 @@ from fieldround.solve.results import BUDGET_SOURCES
 
 # Fill of each budget source: the name of a pattern in report.html.j2.
 _PATTERNS = {source: f"#b{i}" for i, source in enumerate(BUDGET_SOURCES)}
+_ROW_LEFT = 96.0
+_RIGHT = 330.0
 _SIGNS = {
     "accept": '<circle r="3.4" class="v-accept"/>',
     "remeasure": '<path d="M0-4.8L4.6 3.4H-4.6Z" class="v-remeasure"/>',
@@ -160,10 +162,8 @@ def histogram(
         if tick != int(tick):
             continue
         y = base - tick / peak * (base - top_y)
-        parts.append(
-            f'<path d="M{left} {y:.1f}H{right}" class="faint"/>'
-            f'<text x="{left - 4}" y="{y + 3:.1f}" text-anchor="end" class="small">{tick:.0f}</text>'
-        )
+        parts.append(f'<path d="M{left} {y:.1f}H{right}" class="faint"/>')
+        parts.append(_word(left - 4, y + 3, f"{tick:.0f}", "small", "end"))
     for i, n in enumerate(counts):
         high_px = n / peak * (base - top_y)
         parts.append(
@@ -192,35 +192,102 @@ def histogram(
 
 
 def dots(rows: Sequence[tuple[str, float]], title: str, unit: str) -> Markup:
-    """One dot a row on a common scale from zero (for a few dozen rows)."""
+    """One dot a row (name, value) on a common scale from zero, for a few dozen rows."""
     rows = [(name, value) for name, value in rows if math.isfinite(value)]
     if not rows:
         return Markup("")
-    left, right = 96.0, 330.0
-    high = max(value for _, value in rows) or 1.0
-    ticks = _ticks(0.0, high * 1.05, 5)
-    parts = [f'<text x="0" y="11" class="title">{escape(title)}</text>']
-    base = 26 + 13 * len(rows)
-    for tick in ticks:
-        x = left + tick / (high * 1.05) * (right - left)
-        parts.append(
-            f'<path d="M{x:.1f} 20V{base}" class="faint"/><text x="{x:.1f}" y="{base + 12}" '
-            f'text-anchor="middle" class="small">{number(tick, _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1)}</text>'
-        )
-    for i, (name, value) in enumerate(rows):
-        y = 30 + 13 * i
-        x = left + value / (high * 1.05) * (right - left)
-        shown = name if len(name) <= 16 else name[:15] + "…"
-        parts.append(
-            f'<text x="{left - 6}" y="{y + 3}" text-anchor="end" class="small">{escape(shown)}</text>'
-            f'<path d="M{left} {y}H{x:.1f}" class="faint"/>'
-            f'<circle cx="{x:.1f}" cy="{y}" r="2.6" class="reading"/>'
-        )
-    parts.append(
-        f'<path d="M{left} {base}H{right}" class="axis"/>'
-        f'<text x="{right}" y="{base + 24}" text-anchor="end" class="small">{escape(unit)}</text>'
-    )
+    high = 1.05 * max(value for _, value in rows) or 1.0
+    parts, base = _row_frame([name for name, _ in rows], 0.0, high, title, unit)
+    for i, (_, value) in enumerate(rows):
+        x = _ROW_LEFT + value / high * (_RIGHT - _ROW_LEFT)
+        parts.append(f'<circle cx="{x:.1f}" cy="{30 + 13 * i}" r="2.6" class="reading"/>')
     return _svg(340, base + 28, parts, "plot", title)
+
+
+def differences(rows: Sequence[tuple[str, float, float]], title: str, unit: str) -> Markup:
+    """One row (name, difference, its half interval) each, about a line at zero."""
+    rows = [row for row in rows if math.isfinite(row[1]) and math.isfinite(row[2])]
+    if not rows:
+        return Markup("")
+    reach = 1.05 * max(abs(value) + half for _, value, half in rows) or 1.0
+    parts, base = _row_frame([row[0] for row in rows], -reach, reach, title, unit)
+
+    def x(value: float) -> float:
+        return _ROW_LEFT + (value + reach) / (2.0 * reach) * (_RIGHT - _ROW_LEFT)
+
+    parts.append(f'<path d="M{x(0):.1f} 20V{base}" class="axis"/>')
+    for i, (_, value, half) in enumerate(rows):
+        y = 30 + 13 * i
+        parts.append(
+            f'<path d="M{x(value - half):.1f} {y}H{x(value + half):.1f}" class="bar reading"/>'
+            f'<circle cx="{x(value):.1f}" cy="{y}" r="2.6" class="reading"/>'
+        )
+    return _svg(340, base + 28, parts, "plot", title)
+
+
+def _row_frame(
+    names: Sequence[str], low: float, high: float, title: str, unit: str
+) -> tuple[list[str], int]:
+    """Title, row names, grid and scale of a plot with one row a name; and where its base is."""
+    parts = [_word(0, 11, title, "title")]
+    base = 26 + 13 * len(names)
+    ticks = _ticks(low, high, 5)
+    digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
+    for tick in ticks:
+        x = _ROW_LEFT + (tick - low) / (high - low) * (_RIGHT - _ROW_LEFT)
+        parts.append(f'<path d="M{x:.1f} 20V{base}" class="faint"/>')
+        parts.append(_word(x, base + 12, number(tick, digits), "small", "middle"))
+    for i, name in enumerate(names):
+        y = 30 + 13 * i
+        shown = name if len(name) <= 16 else name[:15] + "…"
+        parts.append(_word(_ROW_LEFT - 6, y + 3, shown, "small", "end"))
+        parts.append(f'<path d="M{_ROW_LEFT} {y}H{_RIGHT}" class="faint"/>')
+    parts.append(f'<path d="M{_ROW_LEFT} {base}H{_RIGHT}" class="axis"/>')
+    parts.append(_word(_RIGHT, base + 24, unit, "small", "end"))
+    return parts, base
+
+
+def scatter(
+    points: Sequence[tuple[str, float, float]],
+    title: str,
+    x_unit: str,
+    y_unit: str,
+    limit: float,
+) -> Markup:
+    """Points (verdict, x, y) with the verdict's sign, both scales from zero, a dashed limit."""
+    points = [p for p in points if math.isfinite(p[1]) and math.isfinite(p[2])]
+    if not points:
+        return Markup("")
+    ys = np.array([y for _, _, y in points])
+    x_high = 1.06 * max(x for _, x, _ in points) or 1.0
+    # Far values sit on the upper edge, so that the others keep their room.
+    y_high = 1.1 * max(limit, float(np.quantile(ys, 0.95)))
+    left, top, base = 30.0, 22.0, 128.0
+    parts = [_word(0, 11, title, "title")]
+
+    def x_px(x: float) -> float:
+        return left + x / x_high * (_RIGHT - left)
+
+    def y_px(y: float) -> float:
+        return base - min(y / y_high, 1.0) * (base - top)
+
+    for tick in (ticks := _ticks(0.0, y_high, 4)):
+        digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
+        parts.append(f'<path d="M{left} {y_px(tick):.1f}H{_RIGHT}" class="faint"/>')
+        parts.append(_word(left - 4, y_px(tick) + 3, number(tick, digits), "small", "end"))
+    for tick in (ticks := _ticks(0.0, x_high, 6)):
+        digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
+        parts.append(_word(x_px(tick), base + 12, number(tick, digits), "small", "middle"))
+    parts.append(f'<path d="M{left} {y_px(limit):.1f}H{_RIGHT}" class="limit"/>')
+    for verdict, x, y in points:
+        parts.append(
+            f'<g transform="translate({x_px(x):.1f} {y_px(y):.1f}) scale(.75)">'
+            f"{_SIGNS[verdict]}</g>"
+        )
+    parts.append(f'<path d="M{left} {base}H{_RIGHT}" class="axis"/>')
+    words = f"{y_unit} over {x_unit}, n = {len(points)}"
+    parts.append(_word(_RIGHT, base + 25, words, "small", "end"))
+    return _svg(340, 158, parts, "plot", title)
 
 
 def map_sketch(
@@ -233,7 +300,7 @@ def map_sketch(
     objects : (name, verdict, east m, north m); stations : (east, north);
     sightlines : (east, north, east, north)
     """
-    spots = np.array([o[2:] for o in objects] + [s for s in stations], float).reshape(-1, 2)
+    spots = np.array([o[2:] for o in objects] + list(stations), float).reshape(-1, 2)
     if not len(spots):
         return Markup("")
     low, high = spots.min(axis=0), spots.max(axis=0)
@@ -254,7 +321,7 @@ def map_sketch(
         x, y = at(east, north)
         parts.append(f'<path d="M{x:.1f} {y - 3.6:.1f}l3.4 6h-6.8Z" class="station"/>')
     boxes: list[tuple[float, float, float, float]] = []
-    names = []
+    names: list[str] = []
     for name, verdict, east, north in objects:
         x, y = at(east, north)
         parts.append(f'<g transform="translate({x:.1f} {y:.1f})">{_SIGNS[verdict]}</g>')
@@ -262,19 +329,24 @@ def map_sketch(
         free = all(box[0] > b[2] or box[2] < b[0] or box[1] > b[3] or box[3] < b[1] for b in boxes)
         if free and len(names) < 120 and box[2] < wide:
             boxes.append(box)
-            names.append(
-                f'<text x="{x + 6:.1f}" y="{y + 3.5:.1f}" class="name">{escape(name)}</text>'
-            )
+            names.append(_word(x + 6, y + 3.5, name, "name"))
     length = nice_step(span, 5)
     x, y = edge, tall - 14
     parts += names
     parts.append(
         f'<path d="M{x} {y - 4}v4h{length * scale:.1f}v-4" class="axis"/>'
-        f'<text x="{x + length * scale + 5:.1f}" y="{y}" class="small">{number(length, _digits(length))} m</text>'
         f'<path d="M{wide - 26} {34}l-5 12h10ZM{wide - 26} 46v12" class="north"/>'
-        f'<text x="{wide - 26}" y="{28}" text-anchor="middle" class="small">N</text>'
     )
+    parts.append(_word(x + length * scale + 5, y, f"{number(length, _digits(length))} m", "small"))
+    parts.append(_word(wide - 26, 28, "N", "small", "middle"))
     return _svg(wide, tall, parts, "sketch", "Sketch of the round from above, north up")
+
+
+def _word(x: float, y: float, words: str, kind: str, anchor: str = "start") -> str:
+    return (
+        f'<text x="{x:.1f}" y="{y:.1f}" text-anchor="{anchor}" class="{kind}">'
+        f"{escape(words)}</text>"
+    )
 
 
 def _svg(width: float, height: float, parts: Sequence[str], kind: str, title: str) -> Markup:

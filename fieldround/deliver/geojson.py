@@ -6,6 +6,7 @@ longitude and latitude; an object without a place has a null geometry (section 3
 
 from __future__ import annotations
 
+import itertools
 import json
 from collections.abc import Sequence
 from pathlib import Path
@@ -57,7 +58,7 @@ def bounding_box(points: Sequence[tuple[float, float]]) -> tuple[float, float, f
     latitudes = [latitude for _, latitude in points]
     west, east = meridians[0], meridians[-1]
     widest = west + 360.0 - east
-    for left, right in zip(meridians, meridians[1:], strict=False):
+    for left, right in itertools.pairwise(meridians):
         if right - left > widest:
             widest, west, east = right - left, right, left
     return west, min(latitudes), east, max(latitudes)

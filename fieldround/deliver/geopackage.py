@@ -9,7 +9,7 @@ from __future__ import annotations
 import json
 import sqlite3
 import struct
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -25,6 +25,7 @@ _VERSION = 10301  # 12-128r18 is GeoPackage 1.3.1
 _SPEC = "http://www.geopackage.org/spec131/"
 _CHUNK = 5000
 _UNDEFINED = "undefined"
+_POINT = int(shapely.GeometryType.POINT)
 
 _CORE_SQL = """
 CREATE TABLE gpkg_spatial_ref_sys (
@@ -163,6 +164,10 @@ END;
 """
 
 
+# Scope, table (None for the whole file) and content of one row of gpkg_metadata.
+_Record = tuple[str, str | None, Mapping[str, Any]]
+
+
 @dataclass(frozen=True)
 class Srs:
     """One row of gpkg_spatial_ref_sys."""
@@ -200,7 +205,7 @@ def srs_of(crs_wkt: str | None, epsg: int | None) -> Srs:
 
 def write_geopackage(
     path: Path,
-    layers: Mapping[str, Layer],
+    layers: Iterable[Layer],
     srs: Srs,
     when: str,
     metadata: Mapping[str, Any],
@@ -228,9 +233,11 @@ def write_geopackage(
             _extension(db, name, None, "gpkg_schema", "extension_schema", "read-write")
         for name in ("gpkg_metadata", "gpkg_metadata_reference"):
             _extension(db, name, None, "gpkg_metadata", "extension_metadata", "read-write")
-        for layer in layers.values():
+        records: list[_Record] = [("dataset", None, metadata)]
+        for layer in layers:
             _write_layer(db, layer, srs, when)
-        _write_metadata(db, layers, when, metadata)
+            records.append(_about_layer(layer))
+        _write_metadata(db, records, when)
         db.execute("COMMIT")
     finally:
         db.close()
@@ -345,13 +352,14 @@ def _insert_rows(db: sqlite3.Connection, layer: Layer, srs_id: int) -> None:
 def _blobs(shapes: np.ndarray, srs_id: int) -> Iterator[bytes | None]:
     """GeoPackage binary of each geometry (clause 2.1.3): header, envelope but for points, WKB."""
     wkb = shapely.to_wkb(shapes, byte_order=1)
-    kinds = shapely.get_type_id(shapes)
-    boxes = shapely.bounds(shapes)
+    kinds = shapely.get_type_id(shapes).tolist()
+    boxes = shapely.bounds(shapes).tolist()
+    bare = struct.pack("<2sBBi", b"GP", 0, 0b0001, srs_id)
     for body, kind, box in zip(wkb, kinds, boxes, strict=True):
         if body is None:
             yield None
-        elif kind == shapely.GeometryType.POINT:
-            yield struct.pack("<2sBBi", b"GP", 0, 0b0001, srs_id) + body
+        elif kind == _POINT:
+            yield bare + body
         else:
             west, south, east, north = box
             yield (
@@ -388,21 +396,21 @@ def _constraint(db: sqlite3.Connection, field: Field) -> str | None:
     return field.name
 
 
-def _write_metadata(
-    db: sqlite3.Connection, layers: Mapping[str, Layer], when: str, metadata: Mapping[str, Any]
-) -> None:
-    """One record for the file, one a table with the unit of each field (metadata extension)."""
-    records: list[tuple[str, str | None, Mapping[str, Any]]] = [("dataset", None, metadata)]
-    for layer in layers.values():
-        units = {f.name: f.unit for f in layer.fields if f.unit}
-        scope = "featureType" if layer.table.geometry else "attributeType"
-        records.append(
-            (
-                scope,
-                layer.table.name,
-                {"title": layer.table.title, "about": layer.table.description, "units": units},
-            )
-        )
+def _about_layer(layer: Layer) -> _Record:
+    """Metadata of one table: what it is and the unit of each field."""
+    return (
+        "featureType" if layer.table.geometry else "attributeType",
+        layer.table.name,
+        {
+            "title": layer.table.title,
+            "about": layer.table.description,
+            "units": {f.name: f.unit for f in layer.fields if f.unit},
+        },
+    )
+
+
+def _write_metadata(db: sqlite3.Connection, records: Iterable[_Record], when: str) -> None:
+    """The first record is of the whole file and the parent of the others."""
     for i, (scope, table, content) in enumerate(records, 1):
         db.execute(
             "INSERT INTO gpkg_metadata VALUES (?, ?, ?, 'application/json', ?)",

@@ -6,11 +6,12 @@ In: a `RoundResult` and the folder the files will lie in. Out: a `Layer` for eac
 
 from __future__ import annotations
 
+import functools
+import itertools
 import math
 import os
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
@@ -19,12 +20,14 @@ import numpy as np
 from fieldround import __version__
 from fieldround.deliver import shapes
 from fieldround.deliver.fields import BY_NAME, COORDINATE_FIELDS, Field, Table, passed_through
+from fieldround.deliver.times import in_utc, local_time, time_span
 from fieldround.place.frames import PlacedPoint, Placement
 from fieldround.rounds.model import Round
 from fieldround.solve.results import ObjectResult, RoundResult
 
 VIEWS = "ABCDEFGHIJKLMNOPQRSTUVWXYZ"
 Value = str | int | float | None
+_PART = 2000
 
 
 @dataclass(frozen=True)
@@ -41,36 +44,36 @@ class Layer:
     geometry: np.ndarray | None = None
 
 
-def build_layers(result: RoundResult, out_dir: Path) -> dict[str, Layer]:
-    """Every layer and table of the round by name, in the order of `fields.TABLES`."""
+def layers_of(result: RoundResult, out_dir: Path) -> Iterator[Layer]:
+    """Every layer and table in the order of `fields.TABLES`, made one after the other.
+
+    A large round's polygons and rows need much room, so that a writer should not keep them all.
+    """
     frame = _Frame(result, out_dir)
-    made = (
-        _objects(frame),
-        _sections(frame),
-        _stations(frame),
-        _sightlines(frame),
-        _ellipses(frame),
-        _readings(frame),
-        _budget(frame),
-        _pairs(frame),
-        _checks(frame),
-        _round(frame),
-    )
-    return {layer.table.name: layer for layer in made}
+    for make in (
+        _objects,
+        _sections,
+        _stations,
+        _sightlines,
+        _ellipses,
+        _readings,
+        _budget,
+        _pairs,
+        _checks,
+        _round,
+    ):
+        yield make(frame)
 
 
 def coordinates(result: RoundResult) -> list[tuple[Value, ...]]:
     """Easting, northing, longitude, latitude of every object, None where it has no place."""
-    rows = []
-    for found in result.objects:
-        at = place_of(result, found.object)
-        values = (
-            (None,) * 4
-            if at is None
-            else (at.easting_m, at.northing_m, at.longitude_deg, at.latitude_deg)
-        )
-        rows.append(tuple(settle(v, f) for v, f in zip(values, COORDINATE_FIELDS, strict=True)))
-    return rows
+    names = ("easting_m", "northing_m", "longitude_deg", "latitude_deg")
+    places = [place_of(result, found.object) for found in result.objects]
+    columns = [
+        settled(field, [getattr(at, name, None) for at in places])
+        for field, name in zip(COORDINATE_FIELDS, names, strict=True)
+    ]
+    return list(zip(*columns, strict=True))
 
 
 def place_of(result: RoundResult, name: str) -> PlacedPoint | None:
@@ -78,46 +81,19 @@ def place_of(result: RoundResult, name: str) -> PlacedPoint | None:
     return None if result.placement is None else result.placement.objects.get(name)
 
 
-def settle(value: Any, field: Field) -> Value:
-    """A value as it is written: rounded to the field's digits; NaN and infinity become None."""
-    if value is None:
-        return None
+def settled(field: Field, values: Sequence[Any]) -> list[Value]:
+    """A field's values as they are written: rounded to its digits; NaN and infinity are None."""
     if field.type == "INTEGER":
-        return int(value)
+        return [None if v is None else int(v) for v in values]
     if field.type == "REAL":
-        number = float(value)
-        if not math.isfinite(number):
-            return None
-        return round(number, field.digits) + 0.0  # -0.0 + 0.0 is 0.0
-    text = str(value)
-    return text if text or field.type == "TEXT" else None
-
-
-def in_utc(taken: datetime | str | None) -> str | None:
-    """A time with its UTC offset as `2031-05-04T10:02:03.000Z`; None where no offset is known."""
-    moment = _moment(taken)
-    if moment is None or moment.tzinfo is None:
-        return None
-    moment = moment.astimezone(UTC)
-    return moment.strftime("%Y-%m-%dT%H:%M:%S.") + f"{moment.microsecond // 1000:03d}Z"
-
-
-def local_time(taken: datetime | str | None) -> str | None:
-    """A time as the camera's clock showed it, ISO 8601, with its offset if one is known."""
-    moment = _moment(taken)
-    if moment is not None:
-        return moment.isoformat()
-    return str(taken) if taken else None
-
-
-def time_span(result: RoundResult) -> tuple[str | None, str | None]:
-    """First and last photo time in UTC (times without an offset only if no photo has one)."""
-    times = [p.taken_at for p in result.round.photos.values() if p.taken_at is not None]
-    aware = sorted(text for t in times if (text := in_utc(t)) is not None)
-    if not aware:
-        # Without an offset the clock's own time is all there is; it is used as if it were UTC.
-        aware = sorted(str(in_utc(t.replace(tzinfo=UTC))) for t in times)
-    return (aware[0], aware[-1]) if aware else (None, None)
+        # + 0.0 makes 0.0 of -0.0
+        return [
+            None if v is None or not math.isfinite(v) else round(float(v), field.digits) + 0.0
+            for v in values
+        ]
+    if field.type == "TEXT":
+        return [None if v is None else str(v) for v in values]
+    return [str(v) if v else None for v in values]
 
 
 def photo_path(round_: Round, name: str | None, out_dir: Path) -> str | None:
@@ -125,19 +101,16 @@ def photo_path(round_: Round, name: str | None, out_dir: Path) -> str | None:
     photo = round_.photos.get(name) if name else None
     if photo is None:
         return None
+    folder, file = os.path.split(photo.path)
+    return f"{_relative(folder, str(out_dir))}/{file}"
+
+
+@functools.lru_cache(maxsize=256)
+def _relative(folder: str, start: str) -> str:
     try:
-        return Path(os.path.relpath(photo.path, out_dir)).as_posix()
+        return Path(os.path.relpath(folder, start)).as_posix()
     except ValueError:  # another drive: no relative path exists
-        return photo.path.as_posix()
-
-
-def _moment(taken: datetime | str | None) -> datetime | None:
-    if taken is None or isinstance(taken, datetime):
-        return taken
-    try:
-        return datetime.fromisoformat(taken)
-    except ValueError:
-        return None
+        return Path(folder).as_posix()
 
 
 class _Frame:
@@ -174,8 +147,7 @@ class _Frame:
             centre = np.array([_grid(self.places[name]) for _, name, _ in drawn])
             axes = np.stack([self._axes[name] for _, name, _ in drawn])
             sizes = np.array([s for _, _, s in drawn])
-            ring = shapes.rings(centre, axes, sizes[:, 0], sizes[:, 1], sizes[:, 2])
-            found[[i for i, _, _ in drawn]] = shapes.polygons(ring)
+            found[[i for i, _, _ in drawn]] = shapes.ellipses(centre, axes, sizes)
         return found
 
     def _drawable(self, name: str) -> bool:
@@ -207,7 +179,11 @@ def _layer(
     table = BY_NAME[name]
     taken = [f.name for f in table.fields] + list(reserved)
     passed = passed_through((key for extra in extras for key in extra), taken)
-    rows = [tuple(settle(r.get(f.name), f) for f in table.fields) for r in records]
+    rows: list[tuple[Value, ...]] = []
+    waiting = iter(records)
+    while part := list(itertools.islice(waiting, _PART)):
+        columns = [settled(f, [record.get(f.name) for record in part]) for f in table.fields]
+        rows += zip(*columns, strict=True)
     if passed:
         rows = [
             row + tuple(extra.get(typed) for typed in passed)

@@ -7,15 +7,19 @@ inside it. Nothing is asked of any host unless the reader switches the online ba
 from __future__ import annotations
 
 import base64
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from itertools import count
 from pathlib import Path
-from typing import Any
+from typing import Any, cast
+
+import folium
+from branca.element import Element, Figure, MacroElement, Template
 
 from fieldround.deliver import leaflet
 from fieldround.deliver.crops import Crop, CropsByView
 from fieldround.deliver.layers import VIEWS, Layer, place_of
-from fieldround.deliver.pages import VERDICT_WORDS, environment, part, path, script_json
+from fieldround.deliver.pages import environment, part, path, script_json
+from fieldround.deliver.times import local_dates
 from fieldround.rounds.model import KINDS
 from fieldround.solve.results import VERDICTS, RoundResult
 
@@ -57,9 +61,6 @@ def write_map(
 
 def map_html(result: RoundResult, layers: Mapping[str, Layer], crops: CropsByView) -> str:
     """The page as text."""
-    import folium
-    from branca.element import Element, MacroElement, Template
-
     content = page_content(result, layers)
     quiet = len(result.objects) > _BUSY
     page = folium.Map(
@@ -86,32 +87,38 @@ def map_html(result: RoundResult, layers: Mapping[str, Layer], crops: CropsByVie
     for layer in (*groups.values(), background):
         layer.add_to(page)
     folium.LayerControl(collapsed=True).add_to(page)
-    start = MacroElement()
-    start._template = Template(
-        "{% macro script(this, kwargs) %}"
-        "showRound({{ this.map }}, {{ this.groups }}, {{ this.background }});"
-        "{% endmacro %}"
-    )
-    page.add_child(start, name="start")
+    page.add_child(_Start(page, groups, background), name="start")
 
-    figure = page.get_root()
+    figure = cast(Figure, page.get_root())
     _name_in_order(figure)
-    start.map = page.get_name()
-    start.background = background.get_name()
-    start.groups = (
-        "{" + ", ".join(f"{key}: {group.get_name()}" for key, group in groups.items()) + "}"
-    )
     scripts = (leaflet.script(), part("map_marks.js"), part("map_table.js"), part("map_page.js"))
     styles = (leaflet.style(), part("map.css"))
     figure.header.add_child(Element("\n".join(f"<style>{text}</style>" for text in styles)))
     figure.header.add_child(Element("\n".join(f"<script>{text}</script>" for text in scripts)))
-    figure.title = content["round"]["title"]
     figure._template = environment().get_template("map.html.j2")
-    figure.content = content
-    figure.content_json = script_json(content)
-    figure.crops_json = script_json(_crops(result, crops))
-    figure.verdict_words = VERDICT_WORDS
-    return figure.render()
+    return figure.render(
+        content=content,
+        content_json=script_json(content),
+        crops_json=script_json(_crops(result, crops)),
+    )
+
+
+class _Start(MacroElement):
+    """The last line of the page's script: hands folium's map and layers to ours."""
+
+    _template = Template(
+        "{% macro script(this, kwargs) %}showRound({{ this.names }});{% endmacro %}"
+    )
+
+    def __init__(self, page: Any, groups: Mapping[str, Any], background: Any) -> None:
+        super().__init__()
+        self._parts = (page, groups, background)
+
+    @property
+    def names(self) -> str:
+        page, groups, background = self._parts
+        layers = ", ".join(f"{key}: {group.get_name()}" for key, group in groups.items())
+        return f"{page.get_name()}, {{{layers}}}, {background.get_name()}"
 
 
 def _name_in_order(root: Any) -> None:
@@ -139,7 +146,7 @@ def page_content(result: RoundResult, layers: Mapping[str, Layer]) -> dict[str, 
         """The meridian counted on past 180, so that a round there stays in one piece."""
         return round(first + (longitude - first + 540.0) % 360.0 - 180.0, 9)
 
-    rows = []
+    rows: list[list[Any]] = []
     for found, row, at in zip(result.objects, objects.rows, placed, strict=True):
         values = [row[column[name]] for name in _SHOWN_FIELDS]
         spot = (
@@ -160,7 +167,12 @@ def page_content(result: RoundResult, layers: Mapping[str, Layer]) -> dict[str, 
     verdicts = [found.verdict for found in result.objects]
     kinds = [found.kind for found in result.objects]
     return {
-        "round": {**about, "title": about["title"] or "Round", "tolerance": settings.tolerance_pct},
+        "round": {
+            **about,
+            "title": about["title"] or "Round",
+            "dates": local_dates(result),
+            "tolerance": settings.tolerance_pct,
+        },
         "centre": [round(c, 9) for c in middle],
         "fields": [*_SHOWN_FIELDS, "reasons", "spot"],
         "objects": rows,
@@ -173,7 +185,7 @@ def page_content(result: RoundResult, layers: Mapping[str, Layer]) -> dict[str, 
 
 
 def _sights(
-    result: RoundResult, layers: Mapping[str, Layer], near: Any
+    result: RoundResult, layers: Mapping[str, Layer], near: Callable[[float], float]
 ) -> tuple[list[list[Any]], list[list[int]]]:
     """Stations ([latitude, longitude] or None, pair, view, photo, sd) and lines by index."""
     stations: list[list[Any]] = []

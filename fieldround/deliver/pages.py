@@ -56,7 +56,7 @@ def number(value: float | None, digits: int = 2, missing: str = "–") -> str:
     """A number with a fixed count of decimals, or a dash; -0 is 0."""
     if value is None or not math.isfinite(value):
         return missing
-    return f"{round(value, digits) + 0.0:.{digits}f}"
+    return f"{round(value, digits) + 0.0:.{digits}f}".replace("-", "−")
 
 
 def metres(value: float | None, digits: int = 3) -> str:

@@ -6,22 +6,25 @@ one card an object, method and cautions, and a last page that lists what the fil
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 from markupsafe import Markup
 
 from fieldround import __version__
 from fieldround.deliver import figures
 from fieldround.deliver.crops import Crop, CropsByView
-from fieldround.deliver.layers import VIEWS, Layer, place_of, time_span
+from fieldround.deliver.layers import VIEWS, Layer, place_of
 from fieldround.deliver.pages import environment, part
 from fieldround.deliver.shapes import degrees_per_metre
+from fieldround.deliver.times import local_dates
 from fieldround.place.frames import PlacedPoint
 from fieldround.rounds.model import KINDS, Camera
-from fieldround.solve.results import VERDICTS, ObjectResult, RoundResult
+from fieldround.solve.results import VERDICTS, CheckResult, ObjectResult, RoundResult
 
 # More cards than this make a file nobody prints; those to be measured again come first.
 CARDS_MAX = 1500
@@ -60,14 +63,14 @@ def write_report(
 def report_html(result: RoundResult, layers: Mapping[str, Layer], crops: CropsByView) -> str:
     """The page as text."""
     needy = [found for found in result.objects if found.verdict != "accept"]
-    carded = set(id(f) for f in [*needy, *_accepted(result)][:CARDS_MAX])
+    carded = {id(f) for f in [*needy, *_accepted(result)][:CARDS_MAX]}
     cards = [_card(result, found, crops) for found in result.objects if id(found) in carded]
     template = environment().get_template("report.html.j2")
     return template.render(
         title=result.round.settings.title or "Round",
         settings=result.round.settings,
         version=__version__,
-        times=time_span(result),
+        dates=local_dates(result),
         placement=result.placement,
         totals=_totals(result.objects),
         verdicts=VERDICTS,
@@ -180,11 +183,36 @@ def _plots(result: RoundResult) -> list[Markup]:
             [-settings.agreement_limit, settings.agreement_limit],
         ),
     ]
+    ranges = [
+        (f.verdict, f.range_m, half)
+        for f in result.objects
+        if f.range_m is not None and (half := half_pct(f)) is not None
+    ]
+    plots.append(
+        figures.scatter(
+            ranges,
+            "Half 95 % interval by range (dashed: tolerance)",
+            "m",
+            "%",
+            settings.tolerance_pct,
+        )
+    )
+    checked = [
+        (c.object, 100.0 * c.difference_m / c.check_m, 200.0 * _both_sd(c) / c.check_m)
+        for c in result.checks
+        if c.difference_m is not None and c.check_m > 0.0
+    ]
+    if len(checked) <= _DOTS_MAX:
+        plots.append(figures.differences(checked, "Found minus direct, with the 95 % of both", "%"))
     if len(rms) > _DOTS_MAX:
         plots.append(figures.histogram([v for _, v in rms], "Tie residuals of the pairs", "px rms"))
     else:
         plots.append(figures.dots(rms, "Tie residuals by pair", "px rms"))
     return [plot for plot in plots if plot]
+
+
+def _both_sd(check: CheckResult) -> float:
+    return math.hypot(check.diameter_sd_m or 0.0, check.check_sd_m or 0.0)
 
 
 def _sketch(result: RoundResult, layers: Mapping[str, Layer]) -> Markup:
@@ -195,7 +223,7 @@ def _sketch(result: RoundResult, layers: Mapping[str, Layer]) -> Markup:
     )
     if placement is None or first is None:
         return Markup("")
-    per_east, per_north = degrees_per_metre([first.latitude_deg])[0]
+    per_east, per_north = degrees_per_metre(np.array([first.latitude_deg]))[0]
 
     def local(at: PlacedPoint) -> tuple[float, float]:
         east = (at.longitude_deg - first.longitude_deg + 540.0) % 360.0 - 180.0

@@ -15,6 +15,7 @@ CORNERS = 72
 _SEMI_MAJOR_M = 6378137.0
 _ECCENTRICITY2 = 0.0066943799901413165
 _STEP_M = 10.0
+_PART = 5000
 
 
 def degrees_per_metre(latitude_deg: np.ndarray) -> np.ndarray:
@@ -72,9 +73,17 @@ def rings(
     return np.concatenate([ring, ring[:, :1]], axis=1)
 
 
-def polygons(ring: np.ndarray) -> np.ndarray:
-    """(n, k, 2) closed rings as n shapely polygons."""
-    return shapely.polygons(ring) if len(ring) else np.empty(0, object)
+def ellipses(centre: np.ndarray, axes: np.ndarray, sizes: np.ndarray) -> np.ndarray:
+    """n shapely polygons; sizes is (n, 3): semi-major m, semi-minor m, azimuth degrees.
+
+    centre and axes are as in `rings`; worked off in parts, as their corners need much room
+    """
+    parts = [
+        shapely.polygons(rings(centre[k], axes[k], *sizes[k].T))
+        for start in range(0, len(centre), _PART)
+        for k in [slice(start, start + _PART)]
+    ]
+    return np.concatenate(parts) if parts else np.empty(0, object)
 
 
 def points(xy: np.ndarray) -> np.ndarray:

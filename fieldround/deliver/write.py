@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import shutil
 import tempfile
-from collections.abc import Callable
+from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -18,6 +18,8 @@ from fieldround.rounds.errors import RoundError
 from fieldround.solve.results import RoundResult
 
 PictureSource = Callable[[str], np.ndarray]
+# What the sheet and the pages show of the layers; the others are written and let go.
+_SHOWN = ("objects", "sightlines", "round")
 _NO_TIME = "1970-01-01T00:00:00.000Z"
 
 
@@ -49,12 +51,20 @@ def _write_all(
     from fieldround.deliver.facts import write_facts
     from fieldround.deliver.geojson import write_geojson
     from fieldround.deliver.geopackage import srs_of, write_geopackage
-    from fieldround.deliver.layers import build_layers, coordinates, time_span
+    from fieldround.deliver.layers import Layer, coordinates, layers_of
     from fieldround.deliver.map_page import write_map
     from fieldround.deliver.report import write_report
     from fieldround.deliver.sheet import write_sheet
+    from fieldround.deliver.times import time_span
 
-    layers = build_layers(result, out_dir)
+    layers: dict[str, Layer] = {}
+
+    def kept(made: Iterable[Layer]) -> Iterator[Layer]:
+        for layer in made:
+            if layer.table.name in _SHOWN:
+                layers[layer.table.name] = layer
+            yield layer
+
     places = coordinates(result)
     placement = result.placement
     # The GeoPackage comes first: it is the one another program most likely holds open.
@@ -62,7 +72,7 @@ def _write_all(
     paths = [beside / name for name in (*names, "report.html")]
     write_geopackage(
         paths[0],
-        layers,
+        kept(layers_of(result, out_dir)),
         srs_of(
             None if placement is None else placement.crs_wkt,
             None if placement is None else placement.epsg,

@@ -176,7 +176,7 @@ def large_round(
                 *readings_m,
                 4.1 if again else agreement,
                 np.pi * diameter,
-                None if kind == "ball" else 1.3,
+                None if kind == "ball" else min(1.3, high / 2),
                 diameter * 1.04,
                 6.5,
                 high,

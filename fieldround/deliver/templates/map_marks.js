@@ -28,14 +28,18 @@ var Marks = (function () {
     };
   }
 
-  // A mark whose own `draw(ctx, x, y)` paints it; `hidden` keeps it away from eye and pointer.
+  // A mark whose own `draw(ctx, colours)` paints it about (0, 0); `hidden` keeps it from eye and
+  // pointer, `tiny` says that it is too small to be seen.
   var Mark = L.CircleMarker.extend({
     options: { interactive: false, bubblingMouseEvents: false },
     hidden: false,
+    tiny: false,
     _updatePath: function () {
-      if (this.hidden || !this._renderer._drawing || this._empty()) { return; }
+      if (this.hidden || this.tiny || !this._renderer._drawing || this._empty()) { return; }
       var ctx = this._renderer._ctx;
       ctx.save();
+      ctx.globalAlpha = 1;               // the path drawn before leaves its own behind
+      ctx.setLineDash([]);
       ctx.translate(this._point.x, this._point.y);
       this.draw(ctx, Marks.colours);
       ctx.restore();
@@ -45,19 +49,25 @@ var Marks = (function () {
     }
   });
 
-  var Sign = Mark.extend({
-    options: { interactive: true, radius: 8 },
-    initialize: function (place, verdict) {
-      L.CircleMarker.prototype.initialize.call(this, place, {});
-      this.verdict = verdict;
-      this.chosen = false;
-    },
-    draw: function (ctx, colour) {
-      var sign = SIGNS[this.verdict];
-      if (this.chosen) {
-        ctx.beginPath(); ctx.arc(0, 0, 12, 0, 2 * Math.PI);
-        ctx.lineWidth = 3; ctx.strokeStyle = colour.ink; ctx.stroke();
-      }
+  // Thousands of equal signs are painted from one small picture each, which is several times
+  // quicker than stroking every outline anew.
+  var SIZE = 26, stamps = {};
+  function stamp(name, paint) {
+    if (!stamps[name]) {
+      var made = document.createElement("canvas"), fine = 3;
+      made.width = made.height = SIZE * fine;
+      var ctx = made.getContext("2d");
+      ctx.scale(fine, fine);
+      ctx.translate(SIZE / 2, SIZE / 2);
+      paint(ctx, Marks.colours);
+      stamps[name] = made;
+    }
+    return stamps[name];
+  }
+
+  function paintSign(verdict) {
+    return function (ctx, colour) {
+      var sign = SIGNS[verdict];
       ctx.beginPath();
       if (sign.circle) { ctx.arc(0, 0, sign.circle, 0, 2 * Math.PI); }
       else {
@@ -66,25 +76,49 @@ var Marks = (function () {
       }
       ctx.lineJoin = "round";
       ctx.lineWidth = 4; ctx.strokeStyle = colour.paper; ctx.stroke();
-      ctx.fillStyle = sign.hollow ? colour.paper : colour[this.verdict];
+      ctx.fillStyle = sign.hollow ? colour.paper : colour[verdict];
       ctx.fill();
-      ctx.lineWidth = 1.6; ctx.strokeStyle = colour[this.verdict];
+      ctx.lineWidth = 1.6; ctx.strokeStyle = colour[verdict];
       if (sign.cross) {
         ctx.moveTo(-sign.cross, -sign.cross); ctx.lineTo(sign.cross, sign.cross);
         ctx.moveTo(-sign.cross, sign.cross); ctx.lineTo(sign.cross, -sign.cross);
       }
       ctx.stroke();
+    };
+  }
+
+  var Sign = Mark.extend({
+    options: { interactive: true, radius: 8 },
+    initialize: function (place, verdict) {
+      L.CircleMarker.prototype.initialize.call(this, place, {});
+      this.verdict = verdict;
+      this.chosen = false;
+    },
+    draw: function (ctx, colour) {
+      if (this.chosen) {
+        ctx.beginPath(); ctx.arc(0, 0, 12, 0, 2 * Math.PI);
+        ctx.lineWidth = 3; ctx.strokeStyle = colour.ink; ctx.stroke();
+      }
+      ctx.drawImage(stamp(this.verdict, paintSign(this.verdict)), -SIZE / 2, -SIZE / 2, SIZE, SIZE);
+    },
+    _updateBounds: function () {         // room for the ring around the chosen one
+      L.CircleMarker.prototype._updateBounds.call(this);
+      this._pxBounds = L.bounds(this._pxBounds.min.subtract([7, 7]), this._pxBounds.max.add([7, 7]));
     }
   });
 
+  function paintStation(ctx, colour) {
+    ctx.beginPath();
+    ctx.moveTo(0, -5); ctx.lineTo(4.6, 3.6); ctx.lineTo(-4.6, 3.6); ctx.closePath();
+    ctx.lineJoin = "round";
+    ctx.lineWidth = 3; ctx.strokeStyle = colour.paper; ctx.stroke();
+    ctx.fillStyle = colour.ink; ctx.fill();
+  }
+
   var Station = Mark.extend({
     options: { interactive: true, radius: 6 },
-    draw: function (ctx, colour) {
-      ctx.beginPath();
-      ctx.moveTo(0, -5); ctx.lineTo(4.6, 3.6); ctx.lineTo(-4.6, 3.6); ctx.closePath();
-      ctx.lineJoin = "round";
-      ctx.lineWidth = 3; ctx.strokeStyle = colour.paper; ctx.stroke();
-      ctx.fillStyle = colour.ink; ctx.fill();
+    draw: function (ctx) {
+      ctx.drawImage(stamp("station", paintStation), -SIZE / 2, -SIZE / 2, SIZE, SIZE);
     }
   });
 
@@ -102,10 +136,10 @@ var Marks = (function () {
       var perMetre = perDegree * degreesPerMetre(this._latlng.lat)[0];
       this.pixels = [this.metres[0] * perMetre, this.metres[1] * perMetre];
       this._radius = Math.max(this.pixels[0], 1);
+      this.tiny = this.pixels[0] < 1.2;
       L.CircleMarker.prototype._project.call(this);
     },
     draw: function (ctx, colour) {
-      if (this.pixels[0] < 1) { return; }
       ctx.beginPath();
       ctx.ellipse(0, 0, this.pixels[0], this.pixels[1], this.turn, 0, 2 * Math.PI);
       if (this.verdict) {
@@ -178,5 +212,5 @@ var Marks = (function () {
   }
 
   return { Sign: Sign, Station: Station, Ellipse: Ellipse, grid: grid, signs: signs,
-    colours: null, readColours: function () { Marks.colours = colours(); } };
+    colours: null, readColours: function () { Marks.colours = colours(); stamps = {}; } };
 })();

@@ -12,7 +12,7 @@ function showRound(map, groups, background) {
       ? 100 * (row.diameter_hi_m - row.diameter_lo_m) / 2 / row.diameter_m : null;
     return row;
   });
-  var chosen = null, shown = rows, names = [];
+  var chosen = null, shown = rows, names = [], LINE = 0.8;
 
   Marks.readColours();
   Marks.signs(document);
@@ -22,37 +22,52 @@ function showRound(map, groups, background) {
   var popup = L.popup({ maxWidth: Math.min(380, window.innerWidth - 60), autoPanPadding: [12, 12] });
 
   // -- marks ------------------------------------------------------------------------------
-  content.sightlines.forEach(function (line) {
-    var station = content.stations[line[0]], row = rows[line[1]];
-    if (!station[0] || !row.spot) { return; }
-    var drawn = L.polyline([station[0], row.spot.slice(0, 2)], {
-      interactive: false, weight: 1, color: Marks.colours.line, opacity: 0.8 });
-    drawn.addTo(groups.sightlines);
-    (row.lines = row.lines || []).push(drawn);
+  // A layer that is switched off at the start is made when it is first switched on.
+  function fill(group, make) {
+    var empty = true;
+    function once() {
+      if (empty) { empty = false; make(); }
+    }
+    if (map.hasLayer(group)) { once(); } else { group.on("add", once); }
+  }
+  fill(groups.ellipses, function () {
+    rows.forEach(function (row) {
+      if (!row.spot || !(row.spot[2] > 0)) { return; }
+      row.ellipse = new Marks.Ellipse(row.spot.slice(0, 2), row.spot[2], row.spot[3], row.spot[4]);
+      row.ellipse.hidden = row.hidden;
+      row.ellipse.addTo(groups.ellipses);
+    });
+  });
+  fill(groups.sightlines, function () {
+    content.sightlines.forEach(function (line) {
+      var station = content.stations[line[0]], row = rows[line[1]];
+      if (!station[0] || !row.spot) { return; }
+      var drawn = L.polyline([station[0], row.spot.slice(0, 2)], { interactive: false, weight: 1,
+        color: Marks.colours.line, opacity: row.hidden ? 0 : LINE });
+      drawn.addTo(groups.sightlines);
+      (row.lines = row.lines || []).push(drawn);
+    });
   });
   content.stations.forEach(function (station) {
     if (!station[0]) { return; }
-    var mark = new Marks.Station(station[0]).addTo(groups.stations);
-    mark.bindTooltip("", { direction: "top", offset: [0, -6] });
-    mark.on("tooltipopen", function (event) {
-      event.tooltip.setContent(text("span", station[1] + " " + station[2] + " · " + station[3] +
-        (station[4] === null ? "" : " · ± " + station[4].toFixed(1) + " m")));
-    });
+    var mark = new Marks.Station(station[0]);
+    mark.words = station[1] + " " + station[2] + " · " + station[3] +
+      (station[4] === null ? "" : " · sd " + station[4].toFixed(1) + " m");
+    mark.addTo(groups.stations);
   });
+  groups.stations.bindTooltip(function (mark) { return text("span", mark.words); },
+    { direction: "top", offset: [0, -6] });
   rows.forEach(function (row) {
+    row.hidden = false;
     if (!row.spot) { return; }
-    var place = row.spot.slice(0, 2);
-    if (row.spot[2] > 0) {
-      row.ellipse = new Marks.Ellipse(place, row.spot[2], row.spot[3], row.spot[4], null)
-        .addTo(groups.ellipses);
-    }
+    var place = row.spot.slice(0, 2), half = row.diameter_m / 2;
     if (row.diameter_m) {
-      row.section = new Marks.Ellipse(place, row.diameter_m / 2, row.diameter_m / 2, 0, row.verdict)
-        .addTo(groups.sections);
+      row.section = new Marks.Ellipse(place, half, half, 0, row.verdict).addTo(groups.sections);
     }
     row.mark = new Marks.Sign(place, row.verdict).addTo(groups.objects);
-    row.mark.on("click", function () { choose(row, true); });
+    row.mark.row = row;
   });
+  groups.objects.on("click", function (event) { choose(event.propagatedFrom.row, true); });
   map.on("overlayadd", function (event) {
     if (event.layer !== groups.objects) { groups.objects.bringToFront(); }
   });
@@ -83,16 +98,18 @@ function showRound(map, groups, background) {
     var box = map.getBounds(), taken = [];
     var seen = shown.filter(function (row) { return row.spot && box.contains(row.spot.slice(0, 2)); });
     if (seen.length > 150) { return; }
-    seen.forEach(function (row) {
-      var at = map.latLngToContainerPoint(row.spot.slice(0, 2));
-      var area = [at.x + 9, at.y - 8, at.x + 15 + 6.8 * row.object.length, at.y + 8];
+    var spots = seen.map(function (row) { return map.latLngToContainerPoint(row.spot.slice(0, 2)); });
+    spots.forEach(function (at) { taken.push([at.x - 7, at.y - 7, at.x + 7, at.y + 7]); });
+    seen.forEach(function (row, i) {
+      var at = spots[i], name = row.object.length > 24 ? row.object.slice(0, 23) + "…" : row.object;
+      var area = [at.x + 9, at.y - 8, at.x + 15 + 6.8 * name.length, at.y + 8];
       if (taken.some(function (t) {
         return area[0] < t[2] && area[2] > t[0] && area[1] < t[3] && area[3] > t[1];
       })) { return; }
-      taken.push(area, [at.x - 7, at.y - 7, at.x + 7, at.y + 7]);
+      taken.push(area);
       names.push(L.tooltip({ permanent: true, direction: "right", offset: [8, 0],
         className: "name", interactive: false })
-        .setLatLng(row.spot.slice(0, 2)).setContent(text("span", row.object)).addTo(map));
+        .setLatLng(row.spot.slice(0, 2)).setContent(text("span", name)).addTo(map));
     });
   }
   map.on("moveend overlayadd overlayremove", label);
@@ -103,7 +120,11 @@ function showRound(map, groups, background) {
     if (chosen && chosen.mark) { chosen.mark.chosen = false; chosen.mark.redraw(); }
     chosen = row;
     table.mark(row);
-    if (!row.mark) { map.closePopup(); return; }
+    if (!row.mark) {
+      map.closePopup();
+      lift(row);                         // it stands nowhere on the map, yet has its figures
+      return;
+    }
     row.mark.chosen = true;
     row.mark.bringToFront();
     row.mark.redraw();
@@ -111,7 +132,25 @@ function showRound(map, groups, background) {
     if (!onMap && !map.getBounds().pad(-0.15).contains(place)) {
       map.setView(place, Math.max(map.getZoom(), 18), { animate: false });
     }
-    popup.setLatLng(place).setContent(card(row)).openOn(map);
+    if (narrow.matches) { lift(row); }
+    else { popup.setLatLng(place).setContent(card(row)).openOn(map); }
+  }
+  // On a narrow screen a popup would hide the map it stands on, so the card lies over the table.
+  var narrow = window.matchMedia("(max-width: 760px)"), sheet = document.getElementById("sheet");
+  function lift(row) {
+    var close = text("button", "×");
+    close.type = "button";
+    close.setAttribute("aria-label", "Close");
+    close.addEventListener("click", function () { sheet.hidden = true; close.blur(); });
+    sheet.replaceChildren(close, card(row));
+    sheet.hidden = false;
+    sheet.scrollTop = 0;
+    if (row.mark) {                      // keep the object in what the card leaves of the map
+      var stage = map.getContainer().getBoundingClientRect();
+      var free = Math.max(60, sheet.getBoundingClientRect().top - stage.top);
+      var at = map.latLngToContainerPoint(row.spot.slice(0, 2));
+      map.panBy([at.x - stage.width / 2, at.y - free / 2], { animate: false });
+    }
   }
   map.on("popupclose", function () {
     if (chosen && chosen.mark) { chosen.mark.chosen = false; chosen.mark.redraw(); }
@@ -236,11 +275,12 @@ function showRound(map, groups, background) {
     label();
   }
   function set(row, hidden) {
-    if (!row.mark || row.mark.hidden === hidden) { return; }
+    if (row.hidden === hidden) { return; }
+    row.hidden = hidden;
     [row.mark, row.section, row.ellipse].forEach(function (mark) {
       if (mark) { mark.hidden = hidden; if (mark._map) { mark.redraw(); } }
     });
-    (row.lines || []).forEach(function (line) { line.setStyle({ opacity: hidden ? 0 : 0.8 }); });
+    (row.lines || []).forEach(function (line) { line.setStyle({ opacity: hidden ? 0 : LINE }); });
     if (hidden && chosen === row) { map.closePopup(); }
   }
   document.getElementById("fit").addEventListener("click", function () { fit(bounds(shown)); });
@@ -263,6 +303,7 @@ function showRound(map, groups, background) {
   var before = null;
   window.addEventListener("beforeprint", function () {
     before = { centre: map.getCenter(), zoom: map.getZoom() };
+    document.getElementById("legend").open = true;
     document.documentElement.classList.add("printing");
     map.invalidateSize({ animate: false, pan: false });
     fit(bounds(shown).isValid() ? bounds(shown) : everything());
@@ -273,7 +314,7 @@ function showRound(map, groups, background) {
     if (before) { map.setView(before.centre, before.zoom, { animate: false }); }
   });
 
-  if (window.matchMedia("(max-width: 760px)").matches) {
+  if (narrow.matches) {
     document.getElementById("legend").open = false;
     document.getElementById("filters").open = false;
   }
