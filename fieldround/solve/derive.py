@@ -12,10 +12,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from fieldround.place.frames import PairFrame
-from fieldround.solve.adjust import Adjusted, PairFit
+from fieldround.solve.adjust import Adjusted
 from fieldround.solve.mark_residuals import limb_block, outline_block
 from fieldround.solve.problem import PairProblem
 from fieldround.solve.scalar_residuals import section_radius
+from fieldround.solve.settling import PairFit
 from fieldround.solve.state import ABSENT, Layout, PairState, moved
 
 DIFFERENCE_STEP = 1e-6

@@ -13,10 +13,10 @@ from fieldround.geometry.camera import from_card, project
 from fieldround.geometry.solids import limb_points, near_half_section, outline_rays
 from fieldround.geometry.touching import axis_distance
 from fieldround.rounds.model import Mark, Photo
-from fieldround.solve.adjust import PairFit
 from fieldround.solve.derive import section_centre
 from fieldround.solve.results import Drawing
 from fieldround.solve.scalar_residuals import section_radius
+from fieldround.solve.settling import PairFit
 from fieldround.solve.start import camera_rays
 from fieldround.solve.state import ABSENT
 

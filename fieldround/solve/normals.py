@@ -14,7 +14,7 @@ import numpy as np
 from fieldround.solve.observations import blocks
 from fieldround.solve.problem import PairProblem
 from fieldround.solve.robust import cauchy
-from fieldround.solve.state import Layout, PairState
+from fieldround.solve.state import Layout, PairState, ties_moved
 from fieldround.solve.tie_residuals import tie_block
 
 # Keeps the equations of a single tie solvable when no second view fixes its distance.
@@ -124,6 +124,31 @@ def reduce_pair(
         normal += own
         gradient[ties.columns] += block_gradient
     return Reduced(normals, normal, gradient, cost, tie_back, tie_step, ties.columns, squares)
+
+
+def ties_settled(
+    problem: PairProblem,
+    layout: Layout,
+    state: PairState,
+    values: np.ndarray,
+    tie_keep: np.ndarray,
+) -> PairState:
+    """The state after one step of the ties alone, everything else held.
+
+    Without it the second-order error that a step leaves in hundreds of sharp ties looks like a
+    step too long, and the damping creeps.
+    """
+    if not len(state.ties):
+        return state
+    ties = tie_block(problem, layout, state, values, by_rest=False)
+    assert ties.by_tie is not None
+    by_tie_t = ties.by_tie.transpose(0, 2, 1)
+    corner = by_tie_t @ ties.by_tie
+    diagonal = np.einsum("nii->ni", corner)
+    diagonal += TIE_DAMPING * diagonal.sum(axis=1, keepdims=True)
+    gradient = (by_tie_t @ ties.residuals[:, :, None])[:, :, 0]
+    step = -np.einsum("nij,nj->ni", _inverses(corner), gradient)
+    return ties_moved(state, np.where(tie_keep[:, None] > 0.0, step, 0.0))
 
 
 def cost_of(

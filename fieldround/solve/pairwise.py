@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from fieldround.solve.adjust import PairFit, eliminated, settle_pair, shared_columns
+from fieldround.solve.adjust import eliminated, shared_columns
 from fieldround.solve.assemble import Assembled
 from fieldround.solve.cameras import (
     CameraPriors,
@@ -24,6 +24,7 @@ from fieldround.solve.equations import solve_scaled
 from fieldround.solve.fallbacks import parallel_poses
 from fieldround.solve.normals import cost_of, reduce_pair
 from fieldround.solve.problem import Marks, PairProblem
+from fieldround.solve.settling import PairFit, settle_pair
 from fieldround.solve.start import (
     StartError,
     ball_start,

@@ -11,13 +11,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from fieldround.rounds.model import Mark, Pair, Photo, Round, RoundObject
-from fieldround.solve.adjust import Adjusted, PairFit
+from fieldround.solve.adjust import Adjusted
 from fieldround.solve.derive import Finding, find_objects, vertical_from
 from fieldround.solve.drawings import drawings_of
 from fieldround.solve.intervals import diameter_interval
 from fieldround.solve.pairwise import PairStart
 from fieldround.solve.results import ObjectResult, PairResult
 from fieldround.solve.scalar_residuals import scale_block
+from fieldround.solve.settling import PairFit
 from fieldround.solve.verdicts import PairFacts, judge
 
 # Two sources of scale contradict each other beyond this many sds of their difference.
@@ -79,7 +80,7 @@ def solved_pair(
         orientation_from=start.orientation_from,
         ties_used=int(fit.tie_keep.sum()),
         tie_rms_px=rms,
-        converged=start.converged,
+        converged=adjusted.converged,
         remarks=tuple(remarks),
         spoilers=tuple(spoilers),
         object_remarks=object_remarks,

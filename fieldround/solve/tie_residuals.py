@@ -40,11 +40,14 @@ def tie_block(
     layout: Layout,
     state: PairState,
     values: np.ndarray,
+    by_rest: bool = True,
     derivatives: bool = True,
 ) -> TieBlock:
     """Residuals of the ties in all views, in sds.
 
-    values : (v, 9) card values of each view; returns : `TieBlock`
+    values : (v, 9) card values of each view
+    by_rest, derivatives : False to leave out the derivatives by the columns, or all of them
+    returns : `TieBlock`
     """
     n, views = len(state.ties), problem.views
     columns = tie_columns(layout)
@@ -52,7 +55,7 @@ def tie_block(
     weight = seen / problem.ties_sd_px[:, None]
     residuals = np.zeros((n, 2 * views))
     by_tie = np.zeros((n, 2 * views, 3)) if derivatives else None
-    by_rest = np.zeros((n, 2 * views, len(columns))) if derivatives else None
+    rest = np.zeros((n, 2 * views, len(columns))) if derivatives and by_rest else None
     basis = square_basis(state.ties) if derivatives else None
     slot = 0
     for view in range(views):
@@ -67,7 +70,7 @@ def tie_block(
         observed = np.where(seen[:, view, None], problem.ties_px[:, view], pixel)
         residuals[:, rows] = (pixel - observed) * w[:, None]
         first = layout.pose[view]
-        if by_tie is None or by_rest is None or basis is None:
+        if by_tie is None or basis is None:
             continue
         plane = pixel_by_ideal(ideal, values[view])
         by_p = np.empty((n, 2, 3))
@@ -77,13 +80,15 @@ def tie_block(
         turned = by_p @ rotation
         by_tie[:, rows, :2] = turned @ basis
         by_tie[:, rows, 2] = -(turned @ station)
+        if rest is None:
+            continue
         if first != ABSENT:
             # d(p) = omega x p for a rotation step, -rho R dC for a station step.
-            by_rest[:, rows, slot : slot + 3] = -by_p @ cross_matrix(p)
-            by_rest[:, rows, slot + 3 : slot + 6] = -turned * state.ties_rho[:, None, None]
+            rest[:, rows, slot : slot + 3] = -by_p @ cross_matrix(p)
+            rest[:, rows, slot + 3 : slot + 6] = -turned * state.ties_rho[:, None, None]
             slot += 6
         at = len(columns) - (layout.size - layout.camera[view])
-        by_rest[:, rows, at : at + CAMERA_VALUES] += (
+        rest[:, rows, at : at + CAMERA_VALUES] += (
             pixel_by_values(ideal, values[view]) * w[:, None, None]
         )
-    return TieBlock(residuals, by_tie, by_rest, columns)
+    return TieBlock(residuals, by_tie, rest, columns)

@@ -21,7 +21,7 @@ sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
 
 from fieldround.geometry.camera import rays
 from fieldround.rounds.model import Camera, Settings
-from fieldround.solve.adjust import adjust_round, tie_freedom
+from fieldround.solve.adjust import adjust_round
 from fieldround.solve.assemble import Assembled
 from fieldround.solve.cameras import camera_priors, free_values, prior_terms
 from fieldround.solve.derive import find_objects
@@ -30,6 +30,7 @@ from fieldround.solve.intervals import diameter_interval
 from fieldround.solve.normals import reduce_pair
 from fieldround.solve.pairwise import PairStart, solve_alone
 from fieldround.solve.scalar_residuals import section_radius
+from fieldround.solve.settling import tie_freedom
 from fieldround.solve.start import triangulated
 from fieldround.solve.state import ABSENT, make_layout
 from fieldround.solve.verdicts import PairFacts, judge
@@ -146,7 +147,7 @@ def random_case(seed: int) -> Case:
         found.orientation_from,
         int(kept.sum()),
         rms,
-        found.converged,
+        adjusted.converged,
         found.remarks,
         found.spoilers,
     )
