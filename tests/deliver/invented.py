@@ -6,6 +6,7 @@ are drawn, not photographed.
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable
 from dataclasses import replace
 from datetime import datetime, timedelta, timezone
@@ -89,6 +90,7 @@ def _drawings(i: int, photos: tuple[str, ...], kind: str) -> tuple[Drawing, ...]
     return tuple(drawn)
 
 
+@functools.lru_cache(maxsize=64)
 def picture(name: str) -> np.ndarray:
     """A drawn scene: sky, ground, a few upright bands with noise; the same for the same name."""
     width, height = PICTURE
@@ -178,7 +180,7 @@ def large_round(
                 np.pi * diameter,
                 None if kind == "ball" else min(1.3, high / 2),
                 diameter * 1.04,
-                6.5,
+                -6.5,
                 high,
                 0.03 * high,
                 1.4,

@@ -152,6 +152,9 @@ function showRound(map, groups, background) {
       map.panBy([at.x - stage.width / 2, at.y - free / 2], { animate: false });
     }
   }
+  document.addEventListener("keydown", function (event) {
+    if (event.key === "Escape") { map.closePopup(); sheet.hidden = true; }
+  });
   map.on("popupclose", function () {
     if (chosen && chosen.mark) { chosen.mark.chosen = false; chosen.mark.redraw(); }
   });
