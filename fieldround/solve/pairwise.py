@@ -27,15 +27,14 @@ from fieldround.solve.problem import Marks, PairProblem
 from fieldround.solve.settling import PairFit, settle_pair
 from fieldround.solve.start import (
     StartError,
-    ball_start,
     camera_rays,
-    cylinder_start,
+    likely_values,
     poses_from_ties,
     scaled,
-    settled_sides,
     triangulated,
     vertical_start,
 )
+from fieldround.solve.start_objects import ball_start, cylinder_start, settled_sides
 from fieldround.solve.state import CAMERA_VALUES, PairState
 
 # Another pose that fits the ties within this cost of the best one leaves the answer open.
@@ -43,6 +42,8 @@ COST_APART = 8.0
 # Squared departure of one pair's cameras from the round's, in sds, beyond which it stays alone.
 STRANGER_LIMIT = 60.0
 ROBUST_COMPARE = 2.0
+# Further than any photo shows a round thing that could be sized.
+RANGE_MOST_M = 10_000.0
 
 
 @dataclass(frozen=True)
@@ -87,13 +88,14 @@ def solve_alone(
     if not problem.objects:
         return "none of its objects has limbs marked in two photos"
     orientation = "ties"
+    values = likely_values(problem, priors)
     try:
-        rotations, stations, others = poses_from_ties(problem, priors.values)
+        rotations, stations, others = poses_from_ties(problem, values)
     except StartError as trouble:
         if len(problem.photos) > 2:
             return _with_advice(str(trouble), advice)
         orientation = "parallel cameras"
-        problem, rotations, stations = parallel_poses(problem, priors.values)
+        problem, rotations, stations = parallel_poses(problem, values)
         others = []
     poses = [(rotations, stations)]
     for rotation, direction in others:
@@ -103,7 +105,7 @@ def solve_alone(
     attempts, troubles = [], []
     for turned, placed in poses:
         try:
-            attempts.append(_attempt(problem, priors, turned, placed))
+            attempts.append(_attempt(problem, priors, values, turned, placed))
         except (StartError, np.linalg.LinAlgError) as trouble:
             troubles.append(str(trouble))
     if not attempts:
@@ -142,10 +144,13 @@ def _with_advice(sentence: str, advice: Sequence[str]) -> str:
 
 
 def _attempt(
-    problem: PairProblem, priors: CameraPriors, rotations: np.ndarray, stations: np.ndarray
+    problem: PairProblem,
+    priors: CameraPriors,
+    values: np.ndarray,
+    rotations: np.ndarray,
+    stations: np.ndarray,
 ) -> _Attempt:
-    """Start from given poses (A to B of any length) and adjust."""
-    values = priors.values
+    """Start from given poses (A to B of any length) and camera values, and adjust."""
     up = vertical_start(problem, rotations)
     starts, lost = {}, {}
     for k, thing in enumerate(problem.objects):
@@ -191,8 +196,13 @@ def _attempt(
     cost, _ = cost_of(
         stated, fit.layout, fit.state, own[problem.cameras], everything, ROBUST_COMPARE
     )
-    if not np.isfinite(cost) or not np.all(fit.state.radii > 0):
-        raise StartError("the adjustment ran away: the marks contradict each other")
+    ranges = np.linalg.norm(fit.state.points, axis=1)
+    sound = (fit.state.radii > 0) & (fit.state.radii < ranges) & (ranges < RANGE_MOST_M)
+    if not np.isfinite(cost) or not sound.all():
+        raise StartError(
+            "the adjustment ran away: the marks contradict each other, or the baseline is far too "
+            "short for the distance"
+        )
     return _Attempt(fit, own, converged, cost, lost, notes)
 
 

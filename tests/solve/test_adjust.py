@@ -10,7 +10,7 @@ from fieldround.solve.assemble import Assembled
 from fieldround.solve.cameras import camera_priors
 from fieldround.solve.derive import find_objects
 from fieldround.solve.pairwise import PairStart, common_start, solve_alone
-from fieldround.solve.start import closed_form_readings
+from fieldround.solve.start_objects import closed_form_readings
 from tests.bench.honesty import gross, random_case
 from tests.solve.simulated import HEIGHT, WIDTH, simulated_pair
 
