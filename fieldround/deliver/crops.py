@@ -7,7 +7,10 @@ metadata, with the marks and lines in their own pixels. Whole photos never leave
 from __future__ import annotations
 
 import io
+import itertools
+import os
 from collections.abc import Callable, Iterable, Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -29,6 +32,7 @@ MAP_BYTES = 12_000_000
 _NARROWEST = 0.5
 _SECTION_WIDTHS = 2.6
 _SMALLEST_PX = 24.0
+_THREADS = 4
 
 
 @dataclass(frozen=True)
@@ -64,6 +68,8 @@ def cut_crops(
 ) -> dict[tuple[str, str], ViewCrops]:
     """Crops by (object, photo); each photo is looked at once. Empty without pictures.
 
+    pictures : safe to call from several threads
+
     When a round has more crops than the pages may hold, objects that are not accepted come
     first, then the others in their order. A photo that cannot be read has no crops.
     """
@@ -74,16 +80,21 @@ def cut_crops(
     by_photo: dict[str, list[tuple[ObjectResult, Drawing]]] = {}
     for found, drawing in wanted:
         by_photo.setdefault(drawing.photo, []).append((found, drawing))
-    cut: dict[tuple[str, str], ViewCrops] = {}
-    for photo in sorted(by_photo):
+
+    def of_photo(photo: str) -> list[tuple[tuple[str, str], ViewCrops]]:
         try:
             picture = pictures(photo)
         except (RoundError, OSError, KeyError):
-            continue  # the run has said so already; the other photos go on
-        for found, drawing in by_photo[photo]:
-            crops = _of_view(picture, drawing, whole_px, section_px)
-            if crops is not None:
-                cut[found.object, photo] = crops
+            return []  # the run has said so already; the other photos go on
+        views = (
+            (found.object, _of_view(picture, drawing, whole_px, section_px))
+            for found, drawing in by_photo[photo]
+        )
+        return [((name, photo), crops) for name, crops in views if crops is not None]
+
+    # Decoding a photo takes most of the time and leaves Python's lock alone.
+    with ThreadPoolExecutor(max_workers=min(_THREADS, os.cpu_count() or 1)) as pool:
+        cut = dict(itertools.chain.from_iterable(pool.map(of_photo, sorted(by_photo))))
     order = [(found.object, drawing.photo) for found, drawing in wanted]
     return _within_budget({key: cut[key] for key in order if key in cut})
 

@@ -28,6 +28,8 @@ from fieldround.solve.results import VERDICTS, CheckResult, ObjectResult, RoundR
 
 # More cards than this make a file nobody prints; those to be measured again come first.
 CARDS_MAX = 1500
+# Rows of a table; a round with more has them in the layer.
+ROWS_MAX = 5000
 _DOTS_MAX = 60
 
 
@@ -81,6 +83,7 @@ def report_html(result: RoundResult, layers: Mapping[str, Layer], crops: CropsBy
         lost=result.round.lost_photos,
         needy=needy,
         objects=result.objects,
+        rows_max=ROWS_MAX,
         half_pct=half_pct,
         sketch=_sketch(result, layers),
         plots=_plots(result),

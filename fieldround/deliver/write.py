@@ -32,7 +32,8 @@ def write_results(
 ) -> list[Path]:
     """Write every file of out/ and return their paths.
 
-    pictures : gives the upright (h, w, 3) uint8 RGB picture of a photo's name; None = no crops
+    pictures : gives the upright (h, w, 3) uint8 RGB picture of a photo's name, safe to call from
+               several threads; None = no crops
     raises   : WriteError when a file of the run before is held open by another program
     """
     out_dir.mkdir(parents=True, exist_ok=True)
