@@ -37,6 +37,10 @@ DIFFERENCE_FADES_S = 300.0
 # The same for a mean of fixes, where caution asks for MORE sharing: atmosphere and orbits stay
 # alike for half an hour.
 MEAN_FADES_S = 1800.0
+# Variance of the mean of two fixes taken at once, in variances of one: a phone's second fix tells
+# nothing new; a carrier-phase one averages noise and pole, not the base station's coordinates.
+MEAN_OF_TWO = 1.0
+SURVEY_MEAN_OF_TWO = 0.75
 
 
 @dataclass(frozen=True)
@@ -120,12 +124,14 @@ def position_covariance(photos: Sequence[Photo]) -> np.ndarray:
     """Covariance of one axis of the errors of a pair's fixes, (v, v) square metres.
 
     Each fix has an own part o and a part common with its receiver's other fixes. o is 1 minus the
-    LEAST correlation, so that no difference is too sharp; the common part is 1 - o / 2, so that
-    the mean of two fixes is not better than one of them. Both cautions at once make a fix's whole
-    variance larger than its sd squared.
+    LEAST correlation, so that no difference is too sharp; the common part is what makes the mean
+    of two fixes as good as `MEAN_OF_TWO` says. Both cautions at once make a fix's whole variance
+    larger than its sd squared.
     """
     count = len(photos)
-    sd = np.array([worth(photo.fix).sd_m for photo in photos if photo.fix is not None])
+    worths = [worth(photo.fix) for photo in photos if photo.fix is not None]
+    sd = np.array([w.sd_m for w in worths])
+    mean = np.array([SURVEY_MEAN_OF_TWO if w.survey else MEAN_OF_TWO for w in worths])
     timeless = any(photo.taken_at is None for photo in photos)
     least, most = np.ones((count, count)), np.zeros((count, count))
     for i, a in enumerate(photos):
@@ -135,7 +141,7 @@ def position_covariance(photos: Sequence[Photo]) -> np.ndarray:
                 most[i, j] = 1.0 if timeless else mean_correlation(a, b)
     alone = most.max(axis=1, initial=0.0) == 0.0
     own = np.where(alone, 1.0, 1.0 - least.min(axis=1, initial=1.0))
-    share = np.where(alone, 0.0, 1.0 - 0.5 * own)
+    share = np.where(alone, 0.0, mean - 0.5 * own)
     np.fill_diagonal(most, 1.0)
     common = most * np.sqrt(np.outer(share, share))
     return (np.diag(own) + common) * np.outer(sd, sd)

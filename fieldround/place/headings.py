@@ -235,10 +235,11 @@ def _heading(
         known[g.source] = known.get(g.source, 0.0) + 1.0 / own
     whole = sum(known.values())
     named = sorted((s for s in known if known[s] >= _NAMED_SHARE * whole), key=lambda s: -known[s])
+    plain = _misfits(groups, heading, np.zeros(len(devices)))
     misfits = tuple(
-        f"the {g.source} is {abs(m):.0f} degrees off the heading that the pair's other "
+        f"the {g.source} is {abs(p):.0f} degrees off the heading that the pair's other "
         "directions give"
-        for g, m in zip(groups, _misfits(groups, heading, bias), strict=True)
+        for g, m, p in zip(groups, _misfits(groups, heading, bias), plain, strict=True)
         if len(groups) > 1 and abs(m) > 3.0 * np.sqrt(g.variance_deg2 + sd**2)
     )
     return Heading(heading % 360.0, sd, " and ".join(named), follows, misfits)
