@@ -14,6 +14,7 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 
 import numpy as np
+from PIL import Image
 
 from fieldround.rounds.errors import RoundError
 from fieldround.solve.results import Drawing, ObjectResult, RoundResult
@@ -114,8 +115,9 @@ def _of_view(
     # A second look at the section is worth its bytes only where the first cannot show it.
     if section_box is not None and _long_side(section_box) < 0.55 * _long_side(whole_box):
         section = cut_crop(picture, drawing, section_box, section_px)
-    whole = cut_crop(picture, drawing, whole_box, whole_px)
-    small = cut_crop(picture, drawing, whole_box, _MAP_SIZE)
+    image = _shrunk(_piece(picture, whole_box), whole_px)
+    whole = _crop(image, drawing, whole_box)
+    small = _crop(_shrunk(image, _MAP_SIZE), drawing, whole_box)
     return ViewCrops(whole, section, small)
 
 
@@ -126,14 +128,26 @@ def cut_crop(
 
     It is made smaller so that its longer side is at most `long_side`, never larger.
     """
-    from PIL import Image
+    return _crop(_shrunk(_piece(picture, box), long_side), drawing, box)
 
+
+def _piece(picture: np.ndarray, box: tuple[int, int, int, int]) -> Image.Image:
     left, top, right, bottom = box
-    image = Image.fromarray(np.ascontiguousarray(picture[top:bottom, left:right]))
-    shrink = min(1.0, long_side / max(image.size))
+    return Image.fromarray(np.ascontiguousarray(picture[top:bottom, left:right]))
+
+
+def _shrunk(image: Image.Image, long_side: int) -> Image.Image:
+    shrink = long_side / max(image.size)
+    if shrink >= 1.0:
+        return image
     width, height = (max(1, round(side * shrink)) for side in image.size)
-    if shrink < 1.0:
-        image = image.resize((width, height), Image.Resampling.LANCZOS, reducing_gap=2.0)
+    return image.resize((width, height), Image.Resampling.HAMMING, reducing_gap=1.5)
+
+
+def _crop(image: Image.Image, drawing: Drawing, box: tuple[int, int, int, int]) -> Crop:
+    """The image as JPEG and the drawing in its pixels."""
+    left, top, right, bottom = box
+    width, height = image.size
     held = io.BytesIO()
     image.save(held, "JPEG", quality=_QUALITY, optimize=True)
     scale = np.array([width / (right - left), height / (bottom - top)])
