@@ -84,6 +84,16 @@ class PlacedPair:
 
 
 @dataclass(frozen=True)
+class NearDuplicate:
+    """Two objects of one kind, seen from different pairs, that may be the same thing."""
+
+    first: str
+    second: str
+    kind: str
+    apart_m: float
+
+
+@dataclass(frozen=True)
 class Placement:
     """The whole round on the map.
 
@@ -91,6 +101,7 @@ class Placement:
     convergence_deg   : grid convergence at the round's middle (grid north minus true north sense
                         as `convergence_note` states), scale_factor : grid length / ground length
     objects           : each object once, from every pair that sees it
+    near_duplicates   : objects that lie within each other's ellipses; listed, never merged
     """
 
     crs_wkt: str
@@ -101,3 +112,4 @@ class Placement:
     pairs: Mapping[str, PlacedPair]
     objects: Mapping[str, PlacedPoint]
     notes: tuple[str, ...] = ()
+    near_duplicates: tuple[NearDuplicate, ...] = ()

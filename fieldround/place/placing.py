@@ -15,6 +15,7 @@ import numpy as np
 from fieldround.geometry.earth import enu_from_geodetic, geodetic_from_enu
 from fieldround.place.baselines import GnssBaseline
 from fieldround.place.crs import Grid, middle, round_grid
+from fieldround.place.duplicates import near_duplicates, twin_notes
 from fieldround.place.ellipses import error_ellipse, position_sd
 from fieldround.place.fitting import FixFit, fit_fixes
 from fieldround.place.fixes import position_covariance, worth
@@ -92,6 +93,7 @@ def place_round(
             if unsolved is not None:
                 pairs[pair.pair] = unsolved
     objects, merged = _objects(round_, located, headings, grid)
+    twins = near_duplicates(round_.objects, objects)
     return Placement(
         crs_wkt=grid.wkt,
         crs_name=grid.name,
@@ -100,8 +102,10 @@ def place_round(
         scale_factor=grid.scale_factor,
         pairs=pairs,
         objects=objects,
-        notes=(*grid.notes, *_bias_notes(headings), *_height_notes(fixes), *merged),
-    )
+        notes=(*grid.notes, *_bias_notes(headings), *_height_notes(fixes), *merged,
+               *twin_notes(twins)),
+        near_duplicates=twins,
+    )  # fmt: skip
 
 
 def _date(at: datetime) -> datetime:
