@@ -85,7 +85,7 @@ def _digits(sd_mm: float) -> int:
 def closing_lines(result: RoundResult, listed: int, out_dir: Path) -> Iterator[str]:
     """What failed, the counts, the checks, and where the results lie."""
     if listed < len(result.objects):
-        yield f"{len(result.objects) - listed} accepted objects are not listed here."
+        yield f"Not listed: {_many(len(result.objects) - listed, 'accepted object')}."
     for thing in result.objects:
         if thing.verdict != "accept" and thing.reasons:
             yield f"{thing.object}: {thing.reasons[0]}"
@@ -99,9 +99,13 @@ def closing_lines(result: RoundResult, listed: int, out_dir: Path) -> Iterator[s
             yield f"Left out: {sentence}"
     verdicts = [thing.verdict for thing in result.objects]
     counts = ", ".join(f"{verdicts.count(verdict)} {verdict}" for verdict in VERDICTS)
-    yield f"{len(verdicts)} objects in {len(result.pairs)} pairs: {counts}."
+    yield f"{_many(len(verdicts), 'object')} in {_many(len(result.pairs), 'pair')}: {counts}."
     numbers = [check.en_number for check in result.checks if check.en_number is not None]
     if numbers:
         agree = sum(abs(number) <= 1.0 for number in numbers)
         yield f"Checks: {agree} of {len(numbers)} agree within both uncertainties (|En| <= 1)."
     yield f"Results are in {out_dir}; open map.html or report.html there."
+
+
+def _many(count: int, what: str) -> str:
+    return f"{count} {what}{'' if count == 1 else 's'}"

@@ -53,3 +53,13 @@ def with_views_told(
         ]
         told.append(replace(row, reasons=(*row.reasons, *why)))
     return tuple(told)
+
+
+def with_troubles(
+    rows: tuple[PairResult, ...], troubles: Mapping[str, str]
+) -> tuple[PairResult, ...]:
+    """Rows of the pairs with a sentence more; troubles : pair -> sentence."""
+    return tuple(
+        replace(row, reasons=(*row.reasons, troubles[row.pair])) if row.pair in troubles else row
+        for row in rows
+    )

@@ -18,13 +18,14 @@ from fieldround.deliver.write import write_results
 from fieldround.place.baselines import GnssBaseline, gnss_baselines
 from fieldround.place.frames import Placement
 from fieldround.place.placing import place_round
+from fieldround.rounds.errors import RoundError
 from fieldround.rounds.load import load_round
 from fieldround.rounds.model import Mark, Round
 from fieldround.run.pictures_held import PicturesHeld
 from fieldround.run.progress import Progress
 from fieldround.run.solving import solve_what_can
 from fieldround.run.tying import tie_round
-from fieldround.run.usable import with_lost, with_views_left, with_views_told
+from fieldround.run.usable import with_lost, with_troubles, with_views_left, with_views_told
 from fieldround.run.versions import versions
 from fieldround.solve.results import ObjectResult, RoundResult
 from fieldround.solve.rounds import RoundSolution
@@ -72,6 +73,8 @@ def run_round(
     with seconds.of("read"):
         progress.begin("read", 1)
         written = load_round(folder)
+        if out_dir.exists() and not out_dir.is_dir():
+            raise RoundError(f"{out_dir} is a file; the results need a folder of this name")
         progress.done(_contents(written))
     pictures = PicturesHeld(written)
     with seconds.of("ties"):
@@ -86,7 +89,7 @@ def run_round(
         progress.begin("solve", 1)
         baselines = _baselines(round_, notes)
         solution = solve_what_can(round_, tied.ties, baselines, _found_marks(), options.draws)
-        progress.done(f"{len(solution.frames)} of {len(round_.pairs)} pairs solved")
+        progress.done(f"pairs solved: {len(solution.frames)} of {len(round_.pairs)}")
     with seconds.of("place"):
         progress.begin("place", 1)
         placement = _placement(round_, solution, baselines, notes)
@@ -94,7 +97,7 @@ def run_round(
     result = RoundResult(
         round=replace(round_, notes=(*round_.notes, *notes)),
         objects=with_headings(solution, placement),
-        pairs=with_views_told(written, round_, solution.pairs),
+        pairs=with_troubles(with_views_told(written, round_, solution.pairs), tied.troubles),
         readings=solution.readings,
         checks=compare(solution.objects, round_.checks),
         cameras_found=solution.cameras_found,
@@ -109,8 +112,8 @@ def run_round(
 
 def _contents(round_: Round) -> str:
     return (
-        f"{len(round_.pairs)} pairs, {len(round_.objects)} objects, {len(round_.photos)} photos, "
-        f"{len(round_.marks)} marks"
+        f"pairs {len(round_.pairs)}, objects {len(round_.objects)}, photos {len(round_.photos)}, "
+        f"marks {len(round_.marks)}"
     )
 
 

@@ -24,9 +24,12 @@ def solution(round_: Round, bad: tuple[str, ...] = ()) -> RoundSolution:
         if not mine:
             objects.append(
                 an_object(
-                    thing.object, "", verdict="no result", diameter_m=None,
+                    thing.object,
+                    "",
+                    verdict="no result",
+                    diameter_m=None,
                     reasons=("it is marked in no pair",),
-                )  # fmt: skip
+                )
             )
         else:
             sd = 0.001 * (1 + names.index(mine[0]))
@@ -43,7 +46,7 @@ def solution(round_: Round, bad: tuple[str, ...] = ()) -> RoundSolution:
 
 @pytest.fixture
 def solver(monkeypatch: pytest.MonkeyPatch) -> Callable[[Callable[[Round], None]], list[int]]:
-    """Put a solver in place that asks a judge first; gives the numbers of pairs it was called with."""
+    """Put a solver in place that asks a judge first; gives its calls as numbers of pairs."""
 
     def put(judge: Callable[[Round], None]) -> list[int]:
         calls: list[int] = []
