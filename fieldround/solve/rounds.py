@@ -80,7 +80,10 @@ def solve_round(
             lost[pair.pair] = {**assembled.lost, **outcome.lost}
         else:
             refused[pair.pair] = _refused(pair, [outcome], assembled.ties_found)
-    together, values, strangers = common_start(starts, priors)
+    # A pair whose pose is assumed, not observed, has nothing to teach the round's cameras.
+    observed = [s for s in starts if s.orientation_from == "ties"]
+    together, values, strangers = common_start(observed, priors)
+    strangers += [s for s in starts if s.orientation_from != "ties"]
     adjusted = adjust_round([start.fit for start in together], values, priors)
     ended = {s.fit.problem.pair: (s, adjusted, i) for i, s in enumerate(together)}
     for s in strangers:
