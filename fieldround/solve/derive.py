@@ -6,7 +6,7 @@ frame. Linear propagation (JCGM 100:2008, 5.2) through analytic or central-diffe
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +16,7 @@ from fieldround.solve.adjust import Adjusted
 from fieldround.solve.mark_residuals import limb_block, outline_block
 from fieldround.solve.problem import PairProblem
 from fieldround.solve.scalar_residuals import section_radius
-from fieldround.solve.settling import PairFit
+from fieldround.solve.settling import PairFit, tie_votes
 from fieldround.solve.state import ABSENT, Layout, PairState, moved
 
 DIFFERENCE_STEP = 1e-6
@@ -36,6 +36,8 @@ class Finding:
     limb_factor    : residuals of the limb marks against their sds (1 = as stated)
     observables, observables_cov : (4,), (4, 4) log of the baseline, angle at A, parallax, log of
                      sin(half the visible angle at A), all in the plane of the section
+    freedom        : degrees of freedom behind the sd of a source, for those whose size was found
+                     from residuals
     parallax_deg, parallax_sd_deg : angle between the sight lines A and B to the section
     """
 
@@ -64,6 +66,7 @@ class Finding:
     limb_marks: int
     observables: np.ndarray
     observables_cov: np.ndarray
+    freedom: Mapping[str, float]
 
 
 def gradient_of(
@@ -293,6 +296,7 @@ def _find(adjusted: Adjusted, index: int, fit: PairFit, covariance: np.ndarray, 
         limb_marks=count,
         observables=triangle,
         observables_cov=triangle_cov,
+        freedom={"ties": tie_votes(fit), "limb marks": LIMB_VOTES + count},
     )
 
 

@@ -5,8 +5,10 @@ In: a `Finding`. Out: bounds in metres, None where a side is open.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
-from scipy.stats import norm
+from scipy.stats import t as student
 
 from fieldround.solve.derive import Finding
 from fieldround.solve.montecarlo import diameter_distribution
@@ -25,9 +27,21 @@ def is_suspect(finding: Finding) -> bool:
     )
 
 
-def linear_interval(diameter_m: float, sd_m: float, level: float = 0.95) -> tuple[float, float]:
-    """Symmetric interval of a normal error, metres."""
-    reach = float(norm.ppf(0.5 + 0.5 * level)) * sd_m
+def effective_freedom(budget: Mapping[str, float], freedom: Mapping[str, float]) -> float:
+    """Degrees of freedom behind a sum of variances, infinite when all sds are given.
+
+    source : Welch-Satterthwaite formula, JCGM 100:2008, G.4.1
+    """
+    total = sum(budget.values())
+    doubt = sum(budget[name] ** 2 / freedom[name] for name in budget if name in freedom)
+    return total**2 / doubt if doubt > 0.0 else float("inf")
+
+
+def linear_interval(
+    diameter_m: float, sd_m: float, level: float = 0.95, freedom: float = float("inf")
+) -> tuple[float, float]:
+    """Symmetric interval of a normal error whose sd has some degrees of freedom, metres."""
+    reach = float(student.ppf(0.5 + 0.5 * level, freedom)) * sd_m
     return diameter_m - reach, diameter_m + reach
 
 
@@ -44,7 +58,9 @@ def diameter_interval(
     draws     : Monte Carlo draws asked for; None = only where the linear interval is suspect
     """
     if draws is None and not is_suspect(finding):
-        return linear_interval(finding.diameter_m, finding.diameter_sd_m, level)
-    drawn = diameter_distribution(finding, pair, roundness, level, draws)
+        freedom = effective_freedom(finding.budget, finding.freedom)
+        return linear_interval(finding.diameter_m, finding.diameter_sd_m, level, freedom)
+    freedom = effective_freedom(finding.budget, finding.freedom)
+    drawn = diameter_distribution(finding, pair, roundness, freedom, level, draws)
     high = drawn.high if np.isfinite(drawn.high) else None
     return drawn.low if np.isfinite(drawn.low) else None, high

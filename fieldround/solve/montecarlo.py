@@ -91,13 +91,19 @@ def seed_of(*names: str) -> int:
 
 
 def diameter_distribution(
-    finding: Finding, pair: str, roundness: float, level: float = 0.95, draws: int | None = None
+    finding: Finding,
+    pair: str,
+    roundness: float,
+    freedom: float,
+    level: float = 0.95,
+    draws: int | None = None,
 ) -> Distribution:
     """Distribution of one diameter through the law of sines instead of its tangent.
 
     The observables (baseline, angle at A, parallax, half the visible angle) are near normal even
     where the diameter is not: its parallax stands in a denominator.
     roundness : relative sd of one side's width about the mean diameter
+    freedom   : degrees of freedom behind the sds
     """
     mean = finding.observables
     root = np.linalg.cholesky(
@@ -106,7 +112,11 @@ def diameter_distribution(
     centre = diameter_from(mean[None])[0]
 
     def model(rng: np.random.Generator, n: int) -> np.ndarray:
-        values = diameter_from(mean + rng.standard_normal((n, 4)) @ root.T)
+        steps = rng.standard_normal((n, 4)) @ root.T
+        if np.isfinite(freedom):
+            # The sd itself is found from residuals: Student's t instead of the normal law.
+            steps *= np.sqrt(freedom / rng.chisquare(freedom, n))[:, None]
+        values = diameter_from(mean + steps)
         # The ratio carries the draw over to the section at the reference height.
         values = finding.diameter_m * values / centre
         return values * (1.0 + roundness * rng.standard_normal(n))

@@ -44,6 +44,8 @@ STRANGER_LIMIT = 60.0
 ROBUST_COMPARE = 2.0
 # Further than any photo shows a round thing that could be sized.
 RANGE_MOST_M = 10_000.0
+# Ties that fit no better than this are not ties.
+TIE_SD_MOST_PX = 15.0
 
 
 @dataclass(frozen=True)
@@ -196,6 +198,10 @@ def _attempt(
     cost, _ = cost_of(
         stated, fit.layout, fit.state, own[problem.cameras], everything, ROBUST_COMPARE
     )
+    if len(ties) and float(np.median(fit.problem.ties_sd_px)) > TIE_SD_MOST_PX:
+        raise StartError(
+            "its ties agree on no pose of the cameras: too many of them are wrong; mark some by hand"
+        )
     ranges = np.linalg.norm(fit.state.points, axis=1)
     sound = (fit.state.radii > 0) & (fit.state.radii < ranges) & (ranges < RANGE_MOST_M)
     if not np.isfinite(cost) or not sound.all():

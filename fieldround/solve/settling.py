@@ -147,14 +147,19 @@ def robust_tie_factor(fit: PairFit, squares: np.ndarray) -> float:
     return float(np.sqrt(max(np.median(ratio), 1e-4)))
 
 
+def tie_votes(fit: PairFit) -> float:
+    """Degrees of freedom behind the scale of the ties' sds: residuals and stated sds together."""
+    total = float((tie_freedom(fit.problem) * fit.tie_keep).sum()) - 5.0 * (fit.problem.views - 1)
+    return FACTOR_VOTES + max(total, 0.0)
+
+
 def final_tie_factor(fit: PairFit, squares: np.ndarray) -> float:
     """Scale of the kept ties' residuals against their sds, shrunk toward one."""
-    freedom = tie_freedom(fit.problem) * fit.tie_keep
-    total = float(freedom.sum()) - 5.0 * (fit.problem.views - 1)
-    if total < 4.0:
+    votes = tie_votes(fit)
+    if votes < FACTOR_VOTES + 4.0:
         return 1.0
     chi = float(squares @ fit.tie_keep)
-    return float(np.sqrt((FACTOR_VOTES + chi) / (FACTOR_VOTES + total)))
+    return float(np.sqrt((FACTOR_VOTES + chi) / votes))
 
 
 def keep_right_ties(fit: PairFit, values: np.ndarray) -> tuple[PairFit, np.ndarray]:
