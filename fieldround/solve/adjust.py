@@ -22,6 +22,9 @@ from fieldround.solve.state import (
     ties_moved,
 )
 
+# A pair is at rest when nothing is left to gain but a hundredth of an sd.
+AT_REST = 1e-4
+
 
 @dataclass(frozen=True)
 class Adjusted:
@@ -32,7 +35,7 @@ class Adjusted:
     covariances : per pair (size, size) of its unknowns with its cameras', as the round knows them
     reduced : per pair, the reduced normal equations at the end
     outside : per pair (c, c), what the priors and the other pairs say of its cameras
-    converged : did the iteration come to rest?
+    converged : per pair, did it come to rest?
     """
 
     fits: tuple[PairFit, ...]
@@ -41,7 +44,7 @@ class Adjusted:
     covariances: tuple[np.ndarray, ...]
     reduced: tuple[Reduced, ...]
     outside: tuple[np.ndarray, ...]
-    converged: bool
+    converged: tuple[bool, ...]
 
 
 def shared_columns(layout: Layout) -> np.ndarray:
@@ -98,7 +101,7 @@ def adjust_round(fits: Sequence[PairFit], values: np.ndarray, priors: CameraPrio
             damping = max(damping, 1e-9) * 100.0
         if converged or damping > 1e6:
             break
-    return _with_covariances(fits, values, priors, converged)
+    return _with_covariances(fits, values, priors)
 
 
 def _reduce(fit: PairFit, values: np.ndarray) -> Reduced:
@@ -126,15 +129,18 @@ def eliminated(
 
 
 def _with_covariances(
-    fits: Sequence[PairFit], values: np.ndarray, priors: CameraPriors, converged: bool
+    fits: Sequence[PairFit], values: np.ndarray, priors: CameraPriors
 ) -> Adjusted:
     """Covariance of every pair's unknowns: its own equations, the priors and the other pairs."""
     reduced = [_reduce(fit, values) for fit in fits]
     diagonal, _, _ = prior_terms(priors, values)
     total = np.diag(diagonal.ravel())
-    shares = []
+    shares, converged = [], []
     for fit, r in zip(fits, reduced, strict=True):
-        shared = eliminated(fit.layout, r, 0.0)[2]
+        _, forward, shared, _ = eliminated(fit.layout, r, 0.0)
+        # What a last step of its own would still gain: one pair that creeps stops no other.
+        left = 0.5 * float(r.gradient[: fit.layout.own] @ forward)
+        converged.append(abs(left) < AT_REST)
         columns = shared_columns(fit.layout)
         total[np.ix_(columns, columns)] += shared
         shares.append((columns, shared))
@@ -159,7 +165,7 @@ def _with_covariances(
         tuple(covariances),
         tuple(reduced),
         tuple(outside),
-        converged,
+        tuple(converged),
     )
 
 

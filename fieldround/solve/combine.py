@@ -128,10 +128,10 @@ def _no_result(
     for pair in round_.pairs:
         if thing.pairs and pair.pair not in thing.pairs:
             continue
-        if pair.pair in refused:
-            reasons += [f"pair {pair.pair}: {sentence}" for sentence in refused[pair.pair].reasons]
-        elif thing.object in lost.get(pair.pair, {}):
+        if thing.object in lost.get(pair.pair, {}):
             reasons.append(f"pair {pair.pair}: {lost[pair.pair][thing.object]}")
+        elif pair.pair in refused:
+            reasons += [f"pair {pair.pair}: {sentence}" for sentence in refused[pair.pair].reasons]
     if not reasons:
         reasons.append("it is marked in no pair")
     named = [p for p in round_.pairs if p.pair in thing.pairs]

@@ -57,6 +57,8 @@ def diameter_interval(
     roundness : relative sd of one side's width, already inside `finding.diameter_sd_m`
     draws     : Monte Carlo draws asked for; None = only where the linear interval is suspect
     """
+    if not (np.isfinite(finding.observables).all() and np.isfinite(finding.observables_cov).all()):
+        return None, None
     if draws is None and not is_suspect(finding):
         freedom = effective_freedom(finding.budget, finding.freedom)
         return linear_interval(finding.diameter_m, finding.diameter_sd_m, level, freedom)

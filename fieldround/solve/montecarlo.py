@@ -106,9 +106,8 @@ def diameter_distribution(
     freedom   : degrees of freedom behind the sds
     """
     mean = finding.observables
-    root = np.linalg.cholesky(
-        finding.observables_cov + 1e-30 * np.eye(4) * max(np.trace(finding.observables_cov), 1e-30)
-    )
+    sizes, axes = np.linalg.eigh(finding.observables_cov)
+    root = axes * np.sqrt(np.maximum(sizes, 0.0))
     centre = diameter_from(mean[None])[0]
 
     def model(rng: np.random.Generator, n: int) -> np.ndarray:

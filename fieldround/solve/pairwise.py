@@ -107,7 +107,9 @@ def solve_alone(
     attempts, troubles = [], []
     for turned, placed in poses:
         try:
-            attempts.append(_attempt(problem, priors, values, turned, placed))
+            # A start that runs away overflows before it is refused.
+            with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+                attempts.append(_attempt(problem, priors, values, turned, placed))
         except (StartError, np.linalg.LinAlgError) as trouble:
             troubles.append(str(trouble))
     if not attempts:
@@ -200,7 +202,7 @@ def _attempt(
     )
     if len(ties) and float(np.median(fit.problem.ties_sd_px)) > TIE_SD_MOST_PX:
         raise StartError(
-            "its ties agree on no pose of the cameras: too many of them are wrong; mark some by hand"
+            "its ties agree on no pose of the cameras: too many are wrong; mark some by hand"
         )
     ranges = np.linalg.norm(fit.state.points, axis=1)
     sound = (fit.state.radii > 0) & (fit.state.radii < ranges) & (ranges < RANGE_MOST_M)

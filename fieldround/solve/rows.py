@@ -80,7 +80,7 @@ def solved_pair(
         orientation_from=start.orientation_from,
         ties_used=int(fit.tie_keep.sum()),
         tie_rms_px=rms,
-        converged=adjusted.converged,
+        converged=adjusted.converged[index],
         remarks=tuple(remarks),
         spoilers=tuple(spoilers),
         object_remarks=object_remarks,

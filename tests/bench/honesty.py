@@ -147,7 +147,7 @@ def random_case(seed: int) -> Case:
         found.orientation_from,
         int(kept.sum()),
         rms,
-        adjusted.converged,
+        adjusted.converged[0],
         found.remarks,
         found.spoilers,
     )
