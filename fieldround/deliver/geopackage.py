@@ -17,8 +17,10 @@ from typing import Any
 import numpy as np
 import shapely
 
+from fieldround.deliver.crops import CropsByView
 from fieldround.deliver.fields import Field
 from fieldround.deliver.layers import Layer
+from fieldround.deliver.media import write_media
 
 _APPLICATION_ID = 0x47504B47  # "GPKG", requirement 2
 _VERSION = 10301  # 12-128r18 is GeoPackage 1.3.1
@@ -209,11 +211,13 @@ def write_geopackage(
     srs: Srs,
     when: str,
     metadata: Mapping[str, Any],
+    crops: CropsByView | None = None,
 ) -> None:
     """Write every layer and table into a new file.
 
     when     : UTC time that stands for "last changed" (`2031-05-04T10:02:03.000Z`)
     metadata : what is to be known of the file as a whole; written as JSON
+    crops    : pictures to be put inside, None = none
     """
     path.unlink(missing_ok=True)
     db = sqlite3.connect(path, isolation_level=None)
@@ -237,6 +241,8 @@ def write_geopackage(
         for layer in layers:
             _write_layer(db, layer, srs, when)
             records.append(_about_layer(layer))
+            if crops is not None and layer.table.name == "objects":
+                write_media(db, crops, [str(row[0]) for row in layer.rows], when)
         _write_metadata(db, records, when)
         db.execute("COMMIT")
     finally:

@@ -8,6 +8,7 @@ from __future__ import annotations
 import shutil
 import tempfile
 from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -27,8 +28,23 @@ class WriteError(RoundError):
     """The results could not be written; those of the run before are still there."""
 
 
+@dataclass(frozen=True)
+class Extras:
+    """What is written beyond the usual files.
+
+    embed_crops : the crops stand inside results.gpkg too
+    parquet     : the layers as GeoParquet beside it
+    """
+
+    embed_crops: bool = False
+    parquet: bool = False
+
+
 def write_results(
-    result: RoundResult, out_dir: Path, pictures: PictureSource | None = None
+    result: RoundResult,
+    out_dir: Path,
+    pictures: PictureSource | None = None,
+    extras: Extras | None = None,
 ) -> list[Path]:
     """Write every file of out/ and return their paths.
 
@@ -39,14 +55,18 @@ def write_results(
     out_dir.mkdir(parents=True, exist_ok=True)
     beside = Path(tempfile.mkdtemp(prefix=".writing-", dir=out_dir))
     try:
-        made = _write_all(result, out_dir, beside, pictures)
+        made = _write_all(result, out_dir, beside, pictures, extras or Extras())
         return [_move(path, out_dir / path.name) for path in made]
     finally:
         shutil.rmtree(beside, ignore_errors=True)
 
 
 def _write_all(
-    result: RoundResult, out_dir: Path, beside: Path, pictures: PictureSource | None
+    result: RoundResult,
+    out_dir: Path,
+    beside: Path,
+    pictures: PictureSource | None,
+    extras: Extras,
 ) -> list[Path]:
     from fieldround.deliver.crops import cut_crops
     from fieldround.deliver.facts import write_facts
@@ -68,25 +88,28 @@ def _write_all(
 
     places = coordinates(result)
     placement = result.placement
+    crs = (None, None) if placement is None else (placement.crs_wkt, placement.epsg)
+    crops = cut_crops(result, pictures)
     # The GeoPackage comes first: it is the one another program most likely holds open.
     names = ("results.gpkg", "results.csv", "results.geojson", "run.json", "map.html")
     paths = [beside / name for name in (*names, "report.html")]
     write_geopackage(
         paths[0],
         kept(layers_of(result, out_dir)),
-        srs_of(
-            None if placement is None else placement.crs_wkt,
-            None if placement is None else placement.epsg,
-        ),
+        srs_of(*crs),
         time_span(result)[1] or _NO_TIME,
         _about(result),
+        crops if extras.embed_crops else None,
     )
     write_sheet(paths[1], layers["objects"], places)
     write_geojson(paths[2], layers["objects"], places)
     write_facts(paths[3], result)
-    crops = cut_crops(result, pictures)
     write_map(paths[4], result, layers, crops)
     write_report(paths[5], result, layers, crops)
+    if extras.parquet:
+        from fieldround.deliver.parquet import write_parquet
+
+        paths += write_parquet(beside, layers_of(result, out_dir), *crs)
     return paths
 
 

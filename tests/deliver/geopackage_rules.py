@@ -122,6 +122,7 @@ def faults(path: Path) -> list[str]:
         _index(ask, rule)
         _schema(ask, rule)
         _metadata(ask, rule)
+        _related(ask, rule)
         _nothing_else(ask, rule)
     finally:
         db.close()
@@ -338,6 +339,46 @@ def _metadata(ask: _Ask, rule) -> None:
         rule(100, bool(_TIME.match(when)), f"timestamp {when}")
         rule(101, own in ids, f"md_file_id {own}")
         rule(102, parent is None or (parent in ids and parent != own), f"md_parent_id {parent}")
+
+
+def _related(ask: _Ask, rule) -> None:
+    """OGC 18-000 (Related Tables Extension 1.0): its own numbers, with an R before them."""
+    rows = ask.all(
+        "SELECT table_name, column_name, scope FROM gpkg_extensions"
+        " WHERE extension_name IN ('gpkg_related_tables', 'related_tables')"
+    )
+    tables = ask.tables()
+    rule("R1", bool(rows) == ("gpkgext_relations" in tables), "extension row and table")
+    if not rows:
+        return
+    rule("R2", ("gpkgext_relations", None, "read-write") in rows, f"{rows}")
+    found = {c[1]: c[2] for c in ask.columns("gpkgext_relations")}
+    names = "base_table_name base_primary_column related_table_name related_primary_column"
+    expected = {"id": "INTEGER"} | dict.fromkeys(
+        f"{names} relation_name mapping_table_name".split(), "TEXT"
+    )
+    rule("R4", found == expected, f"{found}")
+    contents = dict(ask.all("SELECT table_name, data_type FROM gpkg_contents"))
+    for base, base_key, related, related_key, relation, mapping in ask.all(
+        "SELECT base_table_name, base_primary_column, related_table_name,"
+        " related_primary_column, relation_name, mapping_table_name FROM gpkgext_relations"
+    ):
+        rule("R3", (mapping, None, "read-write") in rows, f"no extension row for {mapping}")
+        rule("R5", base in contents, base)
+        rule("R6", related in contents, related)
+        keys = {c[1]: c[5] for c in ask.columns(base)}, {c[1]: c[5] for c in ask.columns(related)}
+        rule("R7", keys[0].get(base_key) == 1 and keys[1].get(related_key) == 1, "keys")
+        pair = [c[1:4] for c in ask.columns(mapping)][:2]
+        rule("R9", pair == [("base_id", "INTEGER", 1), ("related_id", "INTEGER", 1)], f"{pair}")
+        lost = ask.all(
+            f'SELECT count(*) FROM "{mapping}" WHERE base_id NOT IN (SELECT "{base_key}" FROM'
+            f' "{base}") OR related_id NOT IN (SELECT "{related_key}" FROM "{related}")'
+        )
+        rule("R10", lost == [(0,)], f"{lost} rows of {mapping} lead nowhere")
+        if relation == "media":
+            own = {c[1]: (c[2], c[3]) for c in ask.columns(related)}
+            rule("R11", own.get("data") == ("BLOB", 1), f"{own}")
+            rule("R11", own.get("content_type") == ("TEXT", 1), f"{own}")
 
 
 def _nothing_else(ask: _Ask, rule) -> None:
