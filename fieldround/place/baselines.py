@@ -19,6 +19,8 @@ from fieldround.rounds.model import Fix, Photo, Round
 # a noisy difference is biased long, by sd^2 / (2 length) an axis across it.
 REFUSED_SDS = 5.0
 FLAGGED_SDS = 20.0
+# How much the camera turns between the two photos of a pair (sd, an assumption).
+TURNED_RAD = 0.35
 
 
 @dataclass(frozen=True)
@@ -58,6 +60,8 @@ def _baseline(name: str, start: tuple[Photo, Fix], end: tuple[Photo, Fix]) -> Gn
     worth_a, worth_b = worth(a), worth(b)
     shared = difference_correlation(start[0], end[0])
     level_var = _difference_variance(worth_a.sd_m, worth_b.sd_m, shared)
+    # Arms from antenna to camera are alike but for how far the camera turned between the photos.
+    level_var += TURNED_RAD**2 * (_square(a.arm_m) + _square(b.arm_m)) / 2.0
     rise_var = _difference_variance(worth_a.vertical_sd_m, worth_b.vertical_sd_m, shared)
     survey = worth_a.survey and worth_b.survey
 
@@ -101,6 +105,10 @@ def _baseline(name: str, start: tuple[Photo, Fix], end: tuple[Photo, Fix]) -> Gn
 
 def _difference_variance(sd_a: float, sd_b: float, shared: float) -> float:
     return sd_a**2 + sd_b**2 - 2.0 * shared * sd_a * sd_b
+
+
+def _square(arm_m: tuple[float, float]) -> float:
+    return arm_m[0] ** 2 + arm_m[1] ** 2
 
 
 def _reasons(chord: float, length: float, sd: float) -> tuple[str, ...]:

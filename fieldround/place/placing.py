@@ -26,6 +26,8 @@ from fieldround.place.north import north_observations
 from fieldround.place.spots import LocatedPair, Spot, located_spots, unturned_spots
 from fieldround.rounds.model import Fix, Pair, Photo, Round
 
+# A camera that looks straight up or down has no level direction for the arm of its antenna.
+_LEVEL_ENOUGH = 0.1
 _NO_FIX = "no photo of the pair has a GNSS position, so the pair is not on the map"
 
 
@@ -56,12 +58,11 @@ def place_round(
     grounds = {frame.pair: _ground(photos[frame.pair]) for frame in frames}
     day = min((p.taken_at for p in round_.photos.values() if p.taken_at), key=_date, default=None)
 
-    fits = {f.pair: _fit(f, grounds[f.pair], None) for f in frames}
+    fits = {f.pair: _fit(f, photos[f.pair], grounds[f.pair], None) for f in frames}
     headings, remarks = _headings(rows, photos, frames, fits, _middle(fixes), day)
     # Once more with the headings: they tell which fix stands off.
-    fits = {
-        f.pair: _fit(f, grounds[f.pair], headings.by_pair[f.pair].heading_deg) for f in frames
-    }
+    known = {pair: heading.heading_deg for pair, heading in headings.by_pair.items()}
+    fits = {f.pair: _fit(f, photos[f.pair], grounds[f.pair], known[f.pair]) for f in frames}
     headings, remarks = _headings(rows, photos, frames, fits, _middle(fixes), day)
 
     located: dict[str, LocatedPair] = {}
@@ -141,17 +142,35 @@ def _ground(photos: Sequence[Photo]) -> _Ground | None:
     return _Ground(origin, fixed, flat, position_covariance([photos[i] for i in fixed]))
 
 
-def _fit(frame: PairFrame, ground: _Ground | None, heading_deg: float | None) -> FixFit | None:
+def _fit(
+    frame: PairFrame,
+    photos: Sequence[Photo],
+    ground: _Ground | None,
+    heading_deg: float | None,
+) -> FixFit | None:
     if ground is None:
         return None
     where = list(ground.fixed)
+    antennas = np.array([_antenna(frame, photos[i], i) for i in where])
     own = 0.5 * np.trace(frame.stations_cov_m2[where][:, :2, :2], axis1=1, axis2=2)
     return fit_fixes(
         ground.fixes_m,
-        frame.stations_m[where, :2],
+        antennas,
         ground.cov_m2 + np.diag(own),
         heading_deg,
     )
+
+
+def _antenna(frame: PairFrame, photo: Photo, i: int) -> np.ndarray:
+    """Where the antenna of a station is in the frame, (2,): the camera less its arm."""
+    station = frame.stations_m[i, :2]
+    level = frame.looks[i, :2]
+    length = float(np.hypot(*level))
+    if photo.fix is None or length < _LEVEL_ENOUGH:
+        return station
+    right, forward = photo.fix.arm_m
+    ahead = level / length
+    return np.asarray(station - forward * ahead - right * np.array([ahead[1], -ahead[0]]))
 
 
 def _headings(
@@ -262,7 +281,9 @@ def _unsolved_pair(round_: Round, pair: Pair, grid: Grid) -> PlacedPair | None:
         photo = round_.photos.get(name)
         if photo is not None and photo.fix is not None:
             fix = photo.fix
-            cov = worth(fix).sd_m ** 2 * np.eye(2)
+            # Without a frame nobody knows which way the arm of the antenna points.
+            arm2 = fix.arm_m[0] ** 2 + fix.arm_m[1] ** 2
+            cov = (worth(fix).sd_m ** 2 + arm2) * np.eye(2)
             stations[name] = _on_grid(
                 fix.longitude_deg,
                 fix.latitude_deg,

@@ -24,6 +24,8 @@ from fieldround.rounds.objects import objects_from_marks, read_objects, with_pai
 from fieldround.rounds.pairs import read_pairs
 from fieldround.rounds.photos import PhotoFile, PhotoFolder, read_photo
 from fieldround.rounds.settings import read_settings
+from fieldround.rounds.track_folder import read_tracks
+from fieldround.rounds.tracks import place_on_tracks
 
 FILES = ("round.toml", "cameras.toml", "photos", "pairs.csv", "objects.csv", "marks.csv",
          "checks.csv")  # fmt: skip
@@ -71,8 +73,10 @@ def load_round(folder: Path) -> Round:
     if has_sheet:
         names = listed.names if listed.complete else None
     checks, check_notes = read_checks(folder / "checks.csv", names, faults)
+    tracks = read_tracks(folder / "tracks", settings.tracks, photo_folder, faults)
     if faults:
         raise SheetsError(_in_order(faults))
+    photos, track_notes = place_on_tracks(photos, tracks.tracks, tracks.points, settings.tracks)
     return Round(
         folder=folder,
         settings=settings,
@@ -83,7 +87,8 @@ def load_round(folder: Path) -> Round:
         marks=marks,
         checks=checks,
         lost_photos=lost,
-        notes=(*sheet.notes, *listed.notes, *marks_sheet.notes, *check_notes, *notes),
+        notes=(*sheet.notes, *listed.notes, *marks_sheet.notes, *check_notes, *notes,
+               *tracks.notes, *track_notes),
     )
 
 

@@ -12,6 +12,8 @@ from datetime import datetime
 from pathlib import Path
 from types import MappingProxyType
 
+from fieldround.rounds.track_settings import TrackSettings
+
 KINDS = ("pole", "trunk", "mast", "bollard", "tank", "pipe", "ball")
 MARK_NAMES = ("left", "right", "outline", "middle", "base", "top", "tie", "plumb")
 
@@ -54,7 +56,8 @@ class Fix:
     horizontal_sd_m is the sd of EACH horizontal axis (a stated 68 % radius is divided by 1.51
     by the reader); sds are None where the source states none. `altitude_m` is as the source
     gives it; `altitude_is` says of what ('sea level' or 'ellipsoid'). `source` is 'exif' or the
-    track's file name.
+    track's file name. `arm_m` is the level part of the way from the antenna to the camera, to the
+    right and forward along the view; a height is already the camera's.
     """
 
     longitude_deg: float
@@ -66,6 +69,7 @@ class Fix:
     dop: float | None = None
     datum: str | None = None
     source: str = "exif"
+    arm_m: tuple[float, float] = (0.0, 0.0)
 
 
 @dataclass(frozen=True)
@@ -188,6 +192,7 @@ class Settings:
     agreement_limit    : largest |agreement| of the two readings that is accepted, in sds
     roundness_pct      : sd of one side's width about the mean diameter, by kind, in percent
     found_ties_max     : ties kept a pair of photos
+    tracks             : how the files under tracks/ are read
     """
 
     title: str = ""
@@ -203,6 +208,7 @@ class Settings:
         default_factory=lambda: MappingProxyType({"trunk": 1.0})
     )
     found_ties_max: int = 400
+    tracks: TrackSettings = field(default_factory=TrackSettings)
 
 
 @dataclass(frozen=True)

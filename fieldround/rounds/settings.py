@@ -15,6 +15,11 @@ from fieldround.rounds.errors import Fault
 from fieldround.rounds.model import KINDS, Settings
 from fieldround.rounds.sheets import nearest_hint
 from fieldround.rounds.toml_text import TomlText, read_toml
+from fieldround.rounds.track_settings import TrackSettings, track_keys
+
+# Keys of [tracks] make a record of their own.
+_TRACKS = "tracks."
+_TRACK_FIELDS = {"utc_offset": "utc_offset_min"}
 
 
 def default_settings() -> Settings:
@@ -48,6 +53,10 @@ def read_settings(path: Path, faults: list[Fault]) -> Settings:
                 except ValueError as wrong:
                     faults.append(Fault(toml.name, row, key, str(value), str(wrong)))
     found["roundness_pct"] = roundness
+    tracks = {key: found.pop(key) for key in list(found) if key.startswith(_TRACKS)}
+    found["tracks"] = TrackSettings(
+        **{_TRACK_FIELDS.get(k, k): v for key, v in tracks.items() if (k := key[len(_TRACKS) :])}
+    )
     return _settings(found)
 
 
@@ -92,6 +101,25 @@ def _crs(value: Any) -> str | None:
     return name
 
 
+def _any_crs(value: Any) -> str | None:
+    """Any CRS of positions on earth, geographic or projected, as text."""
+    if isinstance(value, int) and not isinstance(value, bool):
+        value = f"EPSG:{value}"
+    name = _text(value)
+    if not name:
+        return None
+    import pyproj
+
+    try:
+        pyproj.CRS.from_user_input(name)
+    except pyproj.exceptions.CRSError:
+        raise ValueError(
+            'no CRS of this name is known; write an EPSG code such as "EPSG:25833", WKT or PROJ '
+            "text, or leave the key out for longitude and latitude on WGS 84"
+        ) from None
+    return name
+
+
 def _positive(value: Any) -> float:
     if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
         raise ValueError("write a finite number, without quotes and without its unit")
@@ -129,6 +157,7 @@ SECTIONS: dict[str, dict[str, tuple[str, Callable[[Any], Any]]]] = {
     },
     "roundness": {},
     "ties": {"most": ("found_ties_max", _count)},
+    "tracks": {key: (_TRACKS + key, judge) for key, judge in track_keys(_any_crs).items()},
 }
 
 

@@ -28,6 +28,8 @@ MODULES = {
     "pillow-heif": "pillow_heif",
     "opencv-python-headless": "cv2",
     "pygeomag": "pygeomag",
+    "gpxpy": "gpxpy",
+    "pynmea2": "pynmea2",
     "folium": "folium",
     "xstatic-leaflet": "xstatic.pkg.leaflet",
     "jinja2": "jinja2",
