@@ -17,6 +17,7 @@ from fieldround.geometry.camera import rays, to_card
 from fieldround.rounds.errors import PictureError
 from fieldround.rounds.model import Camera, Pair, Photo, Round
 from fieldround.run.progress import Progress
+from fieldround.run.tie_cache import keep_ties, kept_ties, tie_key
 from fieldround.vision.ties import Ties, find_ties
 
 # OpenCV and the larger array operations let go of the interpreter: two pairs at a time.
@@ -58,7 +59,8 @@ def tie_round(
     pool = ThreadPoolExecutor(WORKERS)
     try:
         waiting = [
-            (pair, pool.submit(_tie_pair, round_, pair, pictures)) for pair in round_.pairs
+            (pair, pool.submit(_tie_pair, round_, pair, pictures, kept, fresh))
+            for pair in round_.pairs
         ]
         for pair, future in waiting:
             outcome = future.result()
@@ -78,9 +80,18 @@ def _told(pair: Pair, outcome: Tied) -> str:
     return outcome.troubles.get(pair.pair, "a photo cannot be read")
 
 
-def _tie_pair(round_: Round, pair: Pair, pictures: Pictures) -> Tied:
+def _tie_pair(round_: Round, pair: Pair, pictures: Pictures, kept: Path, fresh: bool) -> Tied:
     """Ties of one pair; none where photo A or B cannot be read."""
     tied = Tied()
+    key = None
+    if all(name in round_.photos for name in pair.photos):
+        photos = [round_.photos[name] for name in pair.photos]
+        cards = [round_.cameras[photo.camera] for photo in photos]
+        key = tie_key(photos, cards, round_.settings.found_ties_max)
+        held = None if fresh else kept_ties(kept, key)
+        if held is not None:
+            tied.ties[pair.pair] = held
+            return tied
     decoded = {}
     for name in pair.photos:
         if name in round_.photos:
@@ -100,6 +111,8 @@ def _tie_pair(round_: Round, pair: Pair, pictures: Pictures) -> Tied:
             round_.settings.found_ties_max,
             _seed(photos),
         )
+        if key is not None and len(decoded) == len(pair.photos):
+            keep_ties(kept, key, tied.ties[pair.pair])
     except Exception as trouble:
         said = f"{type(trouble).__name__}: {' '.join(str(trouble).split())}"
         tied.troubles[pair.pair] = f"looking for ties in the pictures failed ({said})"

@@ -24,7 +24,7 @@ from fieldround.solve.equations import solve_scaled
 from fieldround.solve.fallbacks import parallel_poses
 from fieldround.solve.normals import cost_of, reduce_pair
 from fieldround.solve.problem import Marks, PairProblem
-from fieldround.solve.settling import PairFit, settle_pair
+from fieldround.solve.settling import PairFit, settle_pair, tie_misfit_px
 from fieldround.solve.start import (
     StartError,
     camera_rays,
@@ -46,6 +46,10 @@ ROBUST_COMPARE = 2.0
 RANGE_MOST_M = 10_000.0
 # Ties that fit no better than this are not ties.
 TIE_SD_MOST_PX = 15.0
+RAN_AWAY = (
+    "the adjustment ran away: the marks contradict each other, or the baseline is far too short "
+    "for the distance"
+)
 
 
 @dataclass(frozen=True)
@@ -200,17 +204,19 @@ def _attempt(
     cost, _ = cost_of(
         stated, fit.layout, fit.state, own[problem.cameras], everything, ROBUST_COMPARE
     )
-    if len(ties) and float(np.median(fit.problem.ties_sd_px)) > TIE_SD_MOST_PX:
+    settled = np.concatenate(
+        [np.ravel(part) for part in vars(fit.state).values()] + [np.ravel(own)]
+    )
+    if not np.isfinite(settled).all():
+        raise StartError(RAN_AWAY)
+    if len(ties) and tie_misfit_px(fit, own) > TIE_SD_MOST_PX:
         raise StartError(
             "its ties agree on no pose of the cameras: too many are wrong; mark some by hand"
         )
     ranges = np.linalg.norm(fit.state.points, axis=1)
     sound = (fit.state.radii > 0) & (fit.state.radii < ranges) & (ranges < RANGE_MOST_M)
     if not np.isfinite(cost) or not sound.all():
-        raise StartError(
-            "the adjustment ran away: the marks contradict each other, or the baseline is far too "
-            "short for the distance"
-        )
+        raise StartError(RAN_AWAY)
     return _Attempt(fit, own, converged, cost, lost, notes)
 
 

@@ -18,7 +18,7 @@ from fieldround.solve.intervals import diameter_interval
 from fieldround.solve.pairwise import PairStart
 from fieldround.solve.results import ObjectResult, PairResult
 from fieldround.solve.scalar_residuals import scale_block
-from fieldround.solve.settling import PairFit
+from fieldround.solve.settling import PairFit, tie_misfit_px
 from fieldround.solve.verdicts import PairFacts, judge
 
 # Two sources of scale contradict each other beyond this many sds of their difference.
@@ -65,7 +65,7 @@ def solved_pair(
     """
     fit = adjusted.fits[index]
     findings = find_objects(adjusted, index)
-    rms = _tie_rms_px(fit, adjusted, index)
+    rms = tie_misfit_px(fit, adjusted.values) if fit.tie_keep.any() else None
     spoilers = [*start.spoilers, *scale_contradictions(fit)]
     remarks = [*start.remarks, *camera_remarks]
     if fit.limbs_dropped:
@@ -104,16 +104,6 @@ def solved_pair(
         result = replace(result, drawings=drawings_of(fit, adjusted.values, k, photos, marks))
         objects.append(SolvedObject(finding, result, fit.layout.camera_ids))
     return SolvedPair(row, tuple(objects))
-
-
-def _tie_rms_px(fit: PairFit, adjusted: Adjusted, index: int) -> float | None:
-    kept = fit.tie_keep > 0
-    if not kept.any():
-        return None
-    squares = adjusted.reduced[index].tie_squares[kept] * fit.problem.ties_sd_px[kept] ** 2
-    # The redundancy of a tie in two views is one coordinate of four.
-    seen = np.isfinite(fit.problem.ties_px[kept, :, 0]).sum(axis=1)
-    return float(np.sqrt(squares.sum() / np.maximum(2 * seen - 3, 1).sum()))
 
 
 def scale_contradictions(fit: PairFit) -> list[str]:

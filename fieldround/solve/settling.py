@@ -35,6 +35,9 @@ REJECT_QUANTILE = 0.9995
 # Residuals speak with this many votes against the stated sds (inverse-gamma shrinkage).
 FACTOR_VOTES = 10.0
 LIMB_REJECT = 4.0
+FAR_OFF_SDS = 30.0
+# Sine of the angle from the baseline inside which ties are left out.
+BESIDE_BASELINE = 0.03
 # No tie is found better than this, however well its neighbours fit.
 TIE_SD_FLOOR_PX = 0.03
 
@@ -67,12 +70,14 @@ def adjust_pair(
     priors: CameraPriors,
     robust: bool,
     stop: float = STOP,
+    hold_poses: bool = False,
 ) -> tuple[PairFit, np.ndarray, bool]:
     """Adjust one pair with its own copy of its cameras.
 
     values : (m, 9) camera values of the round at the start
     robust : True for the robust tie loss, False for plain least squares over the kept ties
     stop   : gain of a step, in cost, that ends the iteration
+    hold_poses : True to move the objects and the vertical only
     returns : the fit, the pair's camera values (m, 9), whether it converged
     """
     problem, layout = fit.problem, fit.layout
@@ -80,6 +85,9 @@ def adjust_pair(
     ids = list(layout.camera_ids)
     own_priors = CameraPriors(priors.values[ids], priors.sds[ids], priors.heavy[ids])
     free = np.concatenate([np.ones(layout.own, dtype=bool), free_values(own_priors).ravel()])
+    if hold_poses:
+        free[: layout.up] = False
+        free[layout.own :] = False
     grid = np.ix_(free, free)
     state, values = fit.state, values.copy()
     damping, converged = 1e-4, False
@@ -162,6 +170,23 @@ def final_tie_factor(fit: PairFit, squares: np.ndarray) -> float:
     return float(np.sqrt((FACTOR_VOTES + chi) / votes))
 
 
+def sound_ties(state: PairState) -> np.ndarray:
+    """Ties in front of every view and not close to the baseline's own direction, (n,).
+
+    Along the baseline a tie's distance is anybody's guess: one step may carry it behind a camera.
+    """
+    sound = np.ones(len(state.ties), dtype=bool)
+    for rotation, station in zip(state.rotations, state.stations, strict=True):
+        p = state.ties - state.ties_rho[:, None] * station
+        length = np.linalg.norm(p, axis=1)
+        sound &= p @ rotation[2] > 0.02 * length
+        reach = float(np.linalg.norm(station))
+        if reach > 0.0:
+            sound &= np.linalg.norm(np.cross(state.ties, station / reach), axis=1) > BESIDE_BASELINE
+            sound &= length > BESIDE_BASELINE
+    return sound
+
+
 def keep_right_ties(fit: PairFit, values: np.ndarray) -> tuple[PairFit, np.ndarray]:
     """Set aside the ties whose residuals are too large; returns the fit and the squares."""
     _, squares = cost_of(
@@ -169,11 +194,7 @@ def keep_right_ties(fit: PairFit, values: np.ndarray) -> tuple[PairFit, np.ndarr
     )
     freedom = tie_freedom(fit.problem)
     limit = chi2.ppf(REJECT_QUANTILE, np.maximum(freedom, 1))
-    in_front = np.ones(len(squares), dtype=bool)
-    for view in range(fit.problem.views):
-        p = fit.state.ties - fit.state.ties_rho[:, None] * fit.state.stations[view]
-        in_front &= (p @ fit.state.rotations[view][2]) > 1e-6
-    keep = (freedom > 0) & (squares < limit) & in_front
+    keep = (freedom > 0) & (squares < limit) & sound_ties(fit.state)
     return replace(fit, tie_keep=keep.astype(float)), squares
 
 
@@ -199,6 +220,29 @@ def drop_stray_limbs(fit: PairFit, values: np.ndarray) -> PairFit:
     return replace(fit, problem=problem, limbs_dropped=fit.limbs_dropped + dropped)
 
 
+def tie_misfit_px(fit: PairFit, values: np.ndarray) -> float:
+    """Root mean square of the kept ties' redundant residuals in pixels, 0 without kept ties."""
+    kept = fit.tie_keep > 0
+    if not kept.any():
+        return 0.0
+    _, squares = cost_of(
+        fit.problem, fit.layout, fit.state, values[fit.problem.cameras], fit.tie_keep, None
+    )
+    px = (squares * fit.problem.ties_sd_px**2)[kept]
+    return float(np.sqrt(px.sum() / np.maximum(tie_freedom(fit.problem)[kept], 1).sum()))
+
+
+def far_off(fit: PairFit, values: np.ndarray) -> bool:
+    """Do the limb marks lie further from the start than marks ever scatter?"""
+    problem, cards = fit.problem, values[fit.problem.cameras]
+    found = [
+        block(problem, fit.layout, fit.state, cards).residuals
+        for marks, block in ((problem.limbs, limb_block), (problem.outlines, outline_block))
+        if len(marks)
+    ]
+    return bool(np.abs(np.concatenate(found)).max() > FAR_OFF_SDS) if found else False
+
+
 def settle_pair(
     problem: PairProblem, start: PairState, values: np.ndarray, priors: CameraPriors
 ) -> tuple[PairFit, np.ndarray, bool]:
@@ -206,7 +250,10 @@ def settle_pair(
 
     returns : the fit, the pair's own camera values (m, 9), whether the last adjustment converged
     """
-    fit = PairFit(problem, make_layout(problem), start, np.ones(len(start.ties)))
+    fit = PairFit(problem, make_layout(problem), start, sound_ties(start).astype(float))
+    if far_off(fit, values):
+        # Marks far from a poor start must not drag good poses after them.
+        fit, _, _ = adjust_pair(fit, values, priors, True, STOP_ROUGH, hold_poses=True)
     fit, own, converged = adjust_pair(fit, values, priors, True, STOP_ROUGH)
     if len(start.ties):
         for _ in range(2):

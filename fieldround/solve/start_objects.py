@@ -17,6 +17,9 @@ from fieldround.solve.problem import Marks, PairProblem
 from fieldround.solve.start import StartError, camera_rays
 from fieldround.solve.state import PairState
 
+# Half a pixel of an ordinary phone: below it two sight lines are one.
+PARALLAX_LEAST_RAD = 2e-4
+
 
 @dataclass(frozen=True)
 class AxisStart:
@@ -54,11 +57,28 @@ def ball_start(
         seen.append(view)
     if len(seen) < 2:
         raise StartError("its outline is marked in fewer than two photos of the pair")
+    _need_parallax(np.array(centres), None)
     point = _meeting(np.array(centres), stations[seen])
     if point is None:
         raise StartError("its sight lines run parallel: the baseline points at it")
     distances = np.linalg.norm(point - stations[seen], axis=1)
     return AxisStart(np.array([0.0, 0.0, 1.0]), point, float(np.mean(np.array(halves) * distances)))
+
+
+def _need_parallax(directions: np.ndarray, axis: np.ndarray | None) -> None:
+    """Refuse sight lines (v, 3) that run parallel, for a cylinder in the plane square to its axis.
+
+    raises : StartError
+    """
+    if axis is not None:
+        directions = directions - (directions @ axis)[:, None] * axis
+        directions = directions / np.linalg.norm(directions, axis=1)[:, None]
+    widest = float(np.linalg.norm(directions[1:] - directions[0], axis=1).max())
+    if widest < PARALLAX_LEAST_RAD:
+        raise StartError(
+            f"its sight lines from the stations differ by {np.degrees(widest):.3f} degrees only: "
+            "the baseline points at it or is too short; stand apart, square to the line of sight"
+        )
 
 
 def _meeting(directions: np.ndarray, stations: np.ndarray) -> np.ndarray | None:
@@ -128,6 +148,7 @@ def cylinder_start(
     axis = axis if axis @ reference > 0 else -axis
     offsets = np.einsum("vi,vi->v", units, at[flat])
     point = np.linalg.lstsq(units, offsets, rcond=1e-10)[0]
+    _need_parallax(middles_, axis)
     # Slide to the height of the marks, as seen from the first view.
     middle, station = middles_[0], at[0]
     foot = axis_distance(middle[None], axis[None], (point - station)[None]).foot[0]

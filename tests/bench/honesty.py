@@ -30,7 +30,7 @@ from fieldround.solve.intervals import diameter_interval
 from fieldround.solve.normals import reduce_pair
 from fieldround.solve.pairwise import PairStart, solve_alone
 from fieldround.solve.scalar_residuals import section_radius
-from fieldround.solve.settling import tie_freedom
+from fieldround.solve.settling import tie_misfit_px
 from fieldround.solve.start import triangulated
 from fieldround.solve.state import ABSENT, make_layout
 from fieldround.solve.verdicts import PairFacts, judge
@@ -137,12 +137,7 @@ def random_case(seed: int) -> Case:
     finding = find_objects(adjusted, 0)[0]
     fit = adjusted.fits[0]
     kept = fit.tie_keep > 0
-    rms = float(
-        np.sqrt(
-            (adjusted.reduced[0].tie_squares * fit.problem.ties_sd_px**2)[kept].sum()
-            / max(tie_freedom(fit.problem)[kept].sum(), 1)
-        )
-    )
+    rms = tie_misfit_px(fit, adjusted.values)
     facts = PairFacts(
         found.orientation_from,
         int(kept.sum()),
