@@ -55,7 +55,10 @@ def _section(path: str, command: click.Command) -> str:
 
 
 def _typed(option: click.Option) -> str:
+    choices = getattr(option.type, "choices", None)
     value = "" if option.is_flag else f" {option.metavar or option.type.name.upper()}"
+    if choices:
+        value = f" {' or '.join(map(str, choices))}"
     return ", ".join(f"`{name}{value}`" for name in option.opts)
 
 

@@ -14,7 +14,7 @@ from time import perf_counter
 from typing import Any
 
 from fieldround.checks.comparison import compare
-from fieldround.deliver.write import write_results
+from fieldround.deliver.write import Extras, write_results
 from fieldround.place.baselines import GnssBaseline, gnss_baselines
 from fieldround.place.frames import Placement
 from fieldround.place.placing import place_round
@@ -38,12 +38,18 @@ LEAN_SEEN_SDS = 2.0
 class RunOptions:
     """What a person may ask of a run.
 
-    draws : Monte Carlo draws, None for as many as the linear result needs
-    fresh : find the ties again instead of taking those of the run before
+    draws         : Monte Carlo draws, None for as many as the linear result needs
+    fresh         : find the ties again instead of taking those of the run before
+    extras        : what is written beyond the usual files
+    postgis       : address of a database that gets the layers too, None for none
+    postgis_mode  : 'replace' or 'append', see `deliver.postgis.write_postgis`
     """
 
     draws: int | None = None
     fresh: bool = False
+    extras: Extras = field(default_factory=Extras)
+    postgis: str | None = None
+    postgis_mode: str = "replace"
 
 
 @dataclass
@@ -104,10 +110,24 @@ def run_round(
         placement=placement,
         run_facts=_facts(options, seconds),
     )
-    progress.begin("write", 1)
-    write_results(result, out_dir, pictures)
+    progress.begin("write", 1 if options.postgis is None else 2)
+    write_results(result, out_dir, pictures, options.extras)
     progress.done(str(out_dir))
+    if options.postgis is not None:
+        rows = _into_database(result, out_dir, options.postgis, options.postgis_mode)
+        progress.done(f"{rows} rows in the database")
     return result
+
+
+def _into_database(result: RoundResult, out_dir: Path, address: str, mode: str) -> int:
+    """Write the layers into a database; returns the number of rows."""
+    from fieldround.deliver.layers import layers_of
+    from fieldround.deliver.postgis import write_postgis
+
+    round_ = result.round
+    name = round_.settings.title or round_.folder.resolve().name
+    epsg = None if result.placement is None else result.placement.epsg
+    return sum(write_postgis(address, layers_of(result, out_dir), name, epsg, mode=mode).values())
 
 
 def _contents(round_: Round) -> str:

@@ -100,6 +100,34 @@ def test_results_can_go_elsewhere(made: Made, tmp_path: Path) -> None:
     assert not (made.folder / "out").exists()
 
 
+def test_crops_and_parquet_are_written_when_asked_for(made: Made) -> None:
+    pytest.importorskip("pyarrow")
+    assert run(made.folder, "--embed-crops", "--parquet").exit_code == 0
+    assert (made.folder / "out" / "objects.parquet").exists()
+    with closing(sqlite3.connect(made.folder / "out" / "results.gpkg")) as table:
+        names = {row[0] for row in table.execute("SELECT name FROM sqlite_master")}
+    assert any("crop" in name for name in names)
+
+
+def test_an_output_whose_package_is_missing_is_refused_before_the_work(
+    made: Made, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr("fieldround.cli.run_command.find_spec", lambda name: None)
+    for option, package in ((["--parquet"], "pyarrow"), (["--postgis", "dbname=x"], "psycopg")):
+        result = run(made.folder, *option)
+        assert result.exit_code == 2
+        assert package in result.stderr
+    assert not (made.folder / "out").exists()
+
+
+def test_a_database_that_is_not_there_leaves_the_files(made: Made) -> None:
+    pytest.importorskip("psycopg")
+    result = run(made.folder, "--postgis", "host=127.0.0.1 port=1 dbname=none connect_timeout=2")
+    assert result.exit_code == 1
+    assert result.stderr.splitlines()[-1].startswith("The work failed: ")
+    assert (made.folder / "out" / "results.gpkg").exists()
+
+
 def test_quiet_prints_nothing_when_all_is_well(made: Made) -> None:
     result = run(made.folder, "--quiet")
     assert (result.exit_code, result.output) == (0, "")
