@@ -13,6 +13,7 @@ from fieldround.solve.problem import PairProblem
 from fieldround.solve.scalar_residuals import (
     attitude_block,
     expectation_block,
+    ground_block,
     pose_prior_block,
     scale_block,
 )
@@ -33,6 +34,7 @@ def blocks(
     found.append(scale_block(problem, layout, state))
     found.append(attitude_block(problem, layout, state))
     found.append(expectation_block(problem, layout, state))
+    found.append(ground_block(problem, layout, state))
     if problem.pose_priors:
         found.append(pose_prior_block(problem, layout, state))
     return [block for block in found if len(block.residuals)]

@@ -15,7 +15,16 @@ from fieldround.place.frames import Placement
 from fieldround.rounds.model import Camera, Round
 
 VERDICTS = ("accept", "remeasure", "no result")
-BUDGET_SOURCES = ("limb marks", "ties", "baseline", "camera", "uprightness", "taper", "roundness")
+BUDGET_SOURCES = (
+    "limb marks",
+    "ties",
+    "baseline",
+    "camera",
+    "uprightness",
+    "taper",
+    "ground line",
+    "roundness",
+)
 
 _EMPTY: Mapping[str, Any] = MappingProxyType({})
 

@@ -124,7 +124,7 @@ def attitude_block(problem: PairProblem, layout: Layout, state: PairState) -> Bl
 
 
 def expectation_block(problem: PairProblem, layout: Layout, state: PairState) -> Block:
-    """Expected taper of each kind, and the ground line where no base mark tells it, in sds."""
+    """Expected taper of each kind, in sds."""
     entries: list[tuple[float, Gradient]] = []
     for k, thing in enumerate(problem.objects):
         if thing.taper_sd > 0.0:
@@ -134,23 +134,30 @@ def expectation_block(problem: PairProblem, layout: Layout, state: PairState) ->
                     {int(layout.taper[k]): 1.0 / thing.taper_sd},
                 )
             )
-        if thing.ground_guess and layout.base[k] != ABSENT:
-            # A is the origin: the ground line lies CAMERA_HEIGHT_M below it along the vertical.
-            ground = state.points[k] + state.base[k] * state.axes[k]
-            basis = square_basis(state.axes[k])
-            sd = CAMERA_HEIGHT_SD_M
-            entries.append(
-                (
-                    (float(ground @ state.up) + CAMERA_HEIGHT_M) / sd,
-                    {
-                        int(layout.base[k]): float(state.axes[k] @ state.up) / sd,
-                        int(layout.point[k]): state.up @ basis / sd,
-                        int(layout.axis[k]): state.base[k] * (state.up @ basis) / sd,
-                        layout.up: ground @ square_basis(state.up) / sd,
-                    },
-                )
-            )
     return _block("taper", entries, layout.size, plain)
+
+
+def ground_block(problem: PairProblem, layout: Layout, state: PairState) -> Block:
+    """Where the ground line is supposed to be when no base mark tells it, in sds."""
+    entries: list[tuple[float, Gradient]] = []
+    for k, thing in enumerate(problem.objects):
+        if not thing.ground_guess or layout.base[k] == ABSENT:
+            continue
+        # A is the origin: the ground line lies CAMERA_HEIGHT_M below it along the vertical.
+        ground = state.points[k] + state.base[k] * state.axes[k]
+        basis, sd = square_basis(state.axes[k]), CAMERA_HEIGHT_SD_M
+        entries.append(
+            (
+                (float(ground @ state.up) + CAMERA_HEIGHT_M) / sd,
+                {
+                    int(layout.base[k]): float(state.axes[k] @ state.up) / sd,
+                    int(layout.point[k]): state.up @ basis / sd,
+                    int(layout.axis[k]): state.base[k] * (state.up @ basis) / sd,
+                    layout.up: ground @ square_basis(state.up) / sd,
+                },
+            )
+        )
+    return _block("ground line", entries, layout.size, plain)
 
 
 def pose_prior_block(problem: PairProblem, layout: Layout, state: PairState) -> Block:

@@ -24,7 +24,8 @@ REMEDIES = {
     "baseline": "measure the baseline better or make it longer",
     "camera": "use a calibrated camera card, or take more pairs with this camera",
     "uprightness": "mark a plumb line or the limbs over a greater height",
-    "taper": "mark the limbs on both sides of the reference height, and the base",
+    "taper": "mark the limbs on both sides of the reference height",
+    "ground line": "mark the base, which tells where the reference height lies",
     "roundness": "take another pair from the side",
 }
 

@@ -92,6 +92,7 @@ def test_blocks_agree_with_differences(column):
         "baseline",
         "uprightness",
         "taper",
+        "ground line",
         "ties",
     }
     for block, more, less in zip(found, high, low, strict=True):
