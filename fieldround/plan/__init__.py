@@ -1,0 +1,1 @@
+"""Before the work: proposals for a round's sheets."""
