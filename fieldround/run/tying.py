@@ -6,7 +6,7 @@ In: a `Round` and its pictures. Out: `Ties` by pair, and the photos that could n
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -83,40 +83,50 @@ def _told(pair: Pair, outcome: Tied) -> str:
 def _tie_pair(round_: Round, pair: Pair, pictures: Pictures, kept: Path, fresh: bool) -> Tied:
     """Ties of one pair; none where photo A or B cannot be read."""
     tied = Tied()
-    key = None
-    if all(name in round_.photos for name in pair.photos):
-        photos = [round_.photos[name] for name in pair.photos]
-        cards = [round_.cameras[photo.camera] for photo in photos]
-        key = tie_key(photos, cards, round_.settings.found_ties_max)
-        held = None if fresh else kept_ties(kept, key)
-        if held is not None:
-            tied.ties[pair.pair] = held
-            return tied
+    if any(name not in round_.photos for name in pair.photos[:2]):
+        return tied
+    most = round_.settings.found_ties_max
+    photos, cards = _cards_of(round_, pair.photos)
+    held = None if fresh else kept_ties(kept, tie_key(photos, cards, most))
+    if held is not None:
+        tied.ties[pair.pair] = held
+        return tied
     decoded = {}
-    for name in pair.photos:
-        if name in round_.photos:
-            try:
-                decoded[name] = pictures(name)
-            except PictureError as trouble:
-                tied.lost[name] = f"photo {trouble}"
+    for photo in photos:
+        try:
+            decoded[photo.name] = pictures(photo.name)
+        except PictureError as trouble:
+            tied.lost[photo.name] = f"photo {trouble}"
     if any(name not in decoded for name in pair.photos[:2]):
         return tied
-    photos = [round_.photos[name] for name in decoded]
-    cards = [round_.cameras[photo.camera] for photo in photos]
+    photos, cards = _cards_of(round_, decoded)
+    if tied.lost and not fresh:
+        # Without the lost view it is another search, which an earlier run may have made.
+        held = kept_ties(kept, tie_key(photos, cards, most))
+    if held is not None:
+        tied.ties[pair.pair] = held
+        return tied
     try:
-        tied.ties[pair.pair] = find_ties(
+        ties = find_ties(
             list(decoded.values()),
             [_rays_of(photo, card) for photo, card in zip(photos, cards, strict=True)],
             [card.focal_px[0] for card in cards],
-            round_.settings.found_ties_max,
+            most,
             _seed(photos),
         )
-        if key is not None and len(decoded) == len(pair.photos):
-            keep_ties(kept, key, tied.ties[pair.pair])
     except Exception as trouble:
         said = f"{type(trouble).__name__}: {' '.join(str(trouble).split())}"
         tied.troubles[pair.pair] = f"looking for ties in the pictures failed ({said})"
+        return tied
+    tied.ties[pair.pair] = ties
+    keep_ties(kept, tie_key(photos, cards, most), ties)
     return tied
+
+
+def _cards_of(round_: Round, names: Iterable[str]) -> tuple[list[Photo], list[Camera]]:
+    """The photos of some names and their camera cards, without those that were lost."""
+    photos = [round_.photos[name] for name in names if name in round_.photos]
+    return photos, [round_.cameras[photo.camera] for photo in photos]
 
 
 def _rays_of(photo: Photo, camera: Camera) -> Callable[[np.ndarray], np.ndarray]:
