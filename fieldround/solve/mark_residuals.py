@@ -26,6 +26,7 @@ from fieldround.solve.state import ABSENT, Layout, PairState
 
 # Limit of the Huber loss in sds: a stray mark pulls no harder than this.
 MARK_LIMIT = 3.0
+STEP_MOST_PX = 50.0
 
 
 @dataclass(frozen=True)
@@ -119,7 +120,9 @@ def _touching_block(
     touch = touching(marks, state, sight)
     by_pixel, _, inverse = _by_pixel(sight, touch.by_ray)
     slope = np.einsum("mi,mi->m", by_pixel, by_pixel)
-    to_limb = -(touch.metres / slope)[:, None] * by_pixel
+    # From a poor start the limb may lie outside the picture, where the distortion means nothing.
+    away_px = np.clip(touch.metres / np.sqrt(slope), -STEP_MOST_PX, STEP_MOST_PX)
+    to_limb = -(away_px / np.sqrt(slope))[:, None] * by_pixel
     ideal = sight.ideal + np.einsum("mij,mj->mi", inverse, to_limb)
     at_limb = distort(ideal, mark_values) * mark_values[:, :2] + mark_values[:, 2:4]
 

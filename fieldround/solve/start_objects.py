@@ -19,6 +19,9 @@ from fieldround.solve.state import PairState
 
 # Half a pixel of an ordinary phone: below it two sight lines are one.
 PARALLAX_LEAST_RAD = 2e-4
+# Sines of the angle between bisecting planes below which they do not give the axis.
+PLANES_APART = 0.02
+PLANES_APART_LEAST = 1e-4
 
 
 @dataclass(frozen=True)
@@ -131,17 +134,20 @@ def cylinder_start(
     middles_, at = np.array(middles), stations[seen]
     # A span below a thousandth of a radian tells no direction: one height, axis by the vertical.
     flat = np.array(spans) > 1.5e-3
-    if flat.sum() >= 2:
-        units = np.array(normals)[flat]
-        units /= np.linalg.norm(units, axis=1)[:, None]
-        axis = np.linalg.svd(units)[2][-1]
-        if np.linalg.svd(units)[1][1] < 1e-4:
-            raise StartError("the baseline lies in one plane with its axis")
-    elif thing.upright_sd_rad is not None:
+    units = np.array(normals)[flat]
+    units /= np.linalg.norm(units, axis=1)[:, None]
+    sizes, rows = np.linalg.svd(units)[1:] if flat.sum() >= 2 else (np.zeros(2), np.eye(3))
+    upright = thing.upright_sd_rad is not None
+    if sizes[1] > (PLANES_APART if upright else PLANES_APART_LEAST):
+        axis = rows[-1]
+    elif upright:
+        # Planes that nearly coincide, or marks at one height, leave the axis to the vertical.
         axis = up
         units = np.cross(middles_, axis)
         units /= np.linalg.norm(units, axis=1)[:, None]
         flat = np.ones(len(seen), dtype=bool)
+    elif flat.sum() >= 2:
+        raise StartError("the baseline lies in one plane with its axis")
     else:
         raise StartError("its limbs are marked at one place only: mark each limb at both ends")
     reference = up if abs(axis @ up) > 0.3 else np.array([1.0, 0.0, 0.0])

@@ -144,7 +144,7 @@ def test_marks_on_two_different_objects_are_not_accepted():
 
 
 def test_a_baseline_along_the_sight_line_is_not_accepted_and_said_so():
-    ahead = replace(B, station=(0.17, 2.0, 1.6))
+    ahead = replace(B, station=(0.034, 0.4, 1.6))
     row = only(solve(Outing({"one": [A, ahead]}, [POLE])))
     assert row.verdict != "accept"
     assert "baseline" in " ".join(row.reasons)
