@@ -16,6 +16,10 @@ from fieldround.solve.rounds import RoundSolution, solve_round
 from fieldround.vision.ties import Ties
 
 
+# When every pair ends with one of these, it is the program that is broken and not the round.
+PROGRAM_ERRORS = (NameError, ImportError, AttributeError, TypeError, NotImplementedError)
+
+
 def solve_what_can(
     round_: Round,
     ties: Mapping[str, Ties],
@@ -23,7 +27,10 @@ def solve_what_can(
     found_marks: Sequence[Mark],
     draws: int | None,
 ) -> RoundSolution:
-    """Solve the round together; when that raises, without the pairs that raise by themselves."""
+    """Solve the round together; when that raises, without the pairs that raise by themselves.
+
+    raises : the pairs' own exception when all of them end with one of `PROGRAM_ERRORS`
+    """
 
     def solved(pairs: Sequence[Pair]) -> RoundSolution:
         part = replace(round_, pairs=tuple(pairs))
@@ -35,11 +42,15 @@ def solve_what_can(
         together = _sentence(trouble)
     alone: dict[str, RoundSolution] = {}
     broken: dict[str, str] = {}
+    wrong: list[Exception] = []
     for pair in round_.pairs:
         try:
             alone[pair.pair] = solved([pair])
         except Exception as trouble:
             broken[pair.pair] = _sentence(trouble)
+            wrong.append(trouble)
+    if wrong and not alone and all(isinstance(one, PROGRAM_ERRORS) for one in wrong):
+        raise wrong[0]
     rest = [pair for pair in round_.pairs if pair.pair in alone]
     if not rest:
         solution = RoundSolution((), (), (), dict(round_.cameras), (), {})

@@ -116,6 +116,23 @@ def test_when_every_pair_breaks_every_object_says_why(tmp_path: Path, solver) ->
     assert got.cameras_found == {CAMERA.name: CAMERA}
 
 
+def test_a_program_that_is_broken_for_every_pair_says_so(tmp_path: Path, solver) -> None:  # type: ignore[no-untyped-def]
+    def judge(round_: Round) -> None:
+        raise NameError("invented")
+
+    solver(judge)
+    with pytest.raises(NameError, match="invented"):
+        solve_what_can(a_round(tmp_path, "abcd"), {}, {}, (), None)
+
+    def only_first(round_: Round) -> None:
+        if round_.pairs[0].pair == "P1":
+            raise NameError("invented")
+
+    solver(only_first)
+    got = solve_what_can(a_round(tmp_path, "abcd"), {}, {}, (), None)
+    assert [row.status for row in got.pairs] == ["failed", "solved"]
+
+
 def test_pairs_that_only_break_together_are_taken_one_by_one(tmp_path: Path, solver) -> None:  # type: ignore[no-untyped-def]
     def judge(round_: Round) -> None:
         if len(round_.pairs) > 1:
