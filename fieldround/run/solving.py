@@ -15,7 +15,6 @@ from fieldround.solve.results import ObjectResult, PairResult
 from fieldround.solve.rounds import RoundSolution, solve_round
 from fieldround.vision.ties import Ties
 
-
 # When every pair ends with one of these, it is the program that is broken and not the round.
 PROGRAM_ERRORS = (NameError, ImportError, AttributeError, TypeError, NotImplementedError)
 
