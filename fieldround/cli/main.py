@@ -14,6 +14,7 @@ from fieldround import __version__
 
 # Name -> module:object. The modules import nothing heavy at their top, so that help is quick.
 COMMANDS = {
+    "start": "fieldround.cli.start_command:start",
     "run": "fieldround.cli.run_command:run",
     "camera": "fieldround.cli.camera_commands:camera",
 }

@@ -15,6 +15,7 @@ from rich.progress import Progress as Bars
 from rich.text import Text
 
 STEPS = {
+    "compare": "Compare photos",
     "read": "Read sheets and photos",
     "ties": "Find ties",
     "limbs": "Find limbs",
@@ -77,7 +78,7 @@ class Lines:
             if before == now:
                 return
         count = f" {self._count} of {self._total}" if self._total > 1 else ""
-        self._print(f"{self._step}{count}: {what}")
+        self._print(f"{self._step}{count}{': ' if what else ''}{what}")
 
     def say(self, sentence: str) -> None:
         """The sentence on a line of its own."""
