@@ -252,16 +252,17 @@ def scatter(
     title: str,
     x_unit: str,
     y_unit: str,
-    limit: float,
+    limit: float | None,
 ) -> Markup:
-    """Points (verdict, x, y) with the verdict's sign, both scales from zero, a dashed limit."""
+    """Points (verdict, x, y) with the verdict's sign, scales from zero, perhaps a dashed limit."""
     points = [p for p in points if math.isfinite(p[1]) and math.isfinite(p[2])]
     if not points:
         return Markup("")
     ys = np.array([y for _, _, y in points])
     x_high = 1.06 * max(x for _, x, _ in points) or 1.0
     # Far values sit on the upper edge, so that the others keep their room.
-    y_high = 1.1 * max(limit, float(np.quantile(ys, 0.95)))
+    y_high = 1.1 * (float(ys.max()) if limit is None else max(limit, float(np.quantile(ys, 0.95))))
+    y_high = y_high or 1.0
     left, top, base = 30.0, 22.0, 128.0
     parts = [_word(0, 11, title, "title")]
 
@@ -278,7 +279,8 @@ def scatter(
     for tick in (ticks := _ticks(0.0, x_high, 6)):
         digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
         parts.append(_word(x_px(tick), base + 12, number(tick, digits), "small", "middle"))
-    parts.append(f'<path d="M{left} {y_px(limit):.1f}H{_RIGHT}" class="limit"/>')
+    if limit is not None:
+        parts.append(f'<path d="M{left} {y_px(limit):.1f}H{_RIGHT}" class="limit"/>')
     for verdict, x, y in points:
         parts.append(
             f'<g transform="translate({x_px(x):.1f} {y_px(y):.1f}) scale(.75)">'

@@ -25,10 +25,10 @@ VERDICT_WORDS = {
 
 
 @functools.cache
-def environment() -> jinja2.Environment:
-    """The templates of this package; every expression is escaped unless it is marked safe."""
+def environment(package: str = "fieldround.deliver") -> jinja2.Environment:
+    """The templates of a package; every expression is escaped unless it is marked safe."""
     env = jinja2.Environment(
-        loader=jinja2.PackageLoader("fieldround.deliver", "templates"),
+        loader=jinja2.PackageLoader(package, "templates"),
         autoescape=True,
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,

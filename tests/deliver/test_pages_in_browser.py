@@ -13,6 +13,7 @@ from fieldround.deliver.layers import layers_of
 from fieldround.deliver.map_page import write_map
 from fieldround.deliver.shapes import degrees_per_metre
 from fieldround.deliver.write import write_results
+from fieldround.trade.lists import write_lists
 from tests.deliver import invented
 
 CHROMIUM = shutil.which("chromium") or shutil.which("chromium-browser")
@@ -235,6 +236,16 @@ def test_the_report_opens_and_prints(browser, small, tmp_path):
             page.pdf(path=tmp_path / f"{paper}.pdf", format=paper)
             # A front page or two, tables, two cards a page, method, contents.
             assert 12 <= pages_of(tmp_path / f"{paper}.pdf") <= 20
+
+
+def test_the_report_with_lists_fits_the_paper(browser, tmp_path):
+    """Whatever is wider than the paper makes a browser print everything smaller."""
+    write_results(invented.small_round(tmp_path), tmp_path / "out")
+    write_lists(tmp_path)
+    with opened(browser, tmp_path / "out" / "report.html", ready=False, width=690) as (page, _):
+        page.emulate_media(media="print")
+        assert page.locator("#lists table").count() >= 11
+        assert page.evaluate("document.documentElement.scrollWidth") <= 690
 
 
 def test_the_report_on_a_phone_does_not_run_over_the_edge(browser, small):

@@ -1,0 +1,1 @@
+"""What each trade asks of the figures: class tables, circumferences, tube sizes, volumes."""
