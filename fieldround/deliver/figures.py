@@ -14,8 +14,26 @@ from markupsafe import Markup, escape
 from fieldround.deliver.pages import number
 from fieldround.solve.results import BUDGET_SOURCES
 
-# Fill of each budget source: the name of a pattern in report.html.j2.
-_PATTERNS = {source: f"#b{i}" for i, source in enumerate(BUDGET_SOURCES)}
+# Fills that can be told apart in black and white: side of the tile, its turn, its drawing.
+_FILLS = (
+    (4, 0, '<rect width="4" height="4" class="dark"/>'),
+    (5, 45, '<path d="M0 2.5h5" class="stroke"/>'),
+    (4, 0, ""),
+    (5, 0, '<circle cx="2.5" cy="2.5" r="1.2" class="dot"/>'),
+    (4, 0, '<path d="M2 0v4" class="stroke"/>'),
+    (3, -45, '<path d="M0 1.5h3" class="stroke"/>'),
+    (5, 0, '<path d="M0 2.5h5M2.5 0v5" class="stroke"/>'),
+    (5, 45, '<path d="M0 2.5h5M2.5 0v5" class="stroke"/>'),
+    (4, 0, '<path d="M0 2h4" class="stroke"/>'),
+    (
+        6,
+        0,
+        '<rect width="6" height="6" class="dark"/><circle cx="3" cy="3" r="1.6" class="light"/>',
+    ),
+    (9, 45, '<path d="M0 4.5h9" class="stroke"/>'),
+    (4, 0, '<rect width="4" height="4" class="grey"/>'),
+)
+_PATTERNS = {source: f"#b{i % len(_FILLS)}" for i, source in enumerate(BUDGET_SOURCES)}
 _ROW_LEFT = 96.0
 _RIGHT = 330.0
 _SIGNS = {
@@ -30,6 +48,21 @@ def sign(verdict: str) -> Markup:
     """The verdict's sign as a small drawing beside a word."""
     return Markup(
         f'<svg class="sign" viewBox="-6 -6 12 12" aria-hidden="true">{_SIGNS[verdict]}</svg>'
+    )
+
+
+def patterns() -> Markup:
+    """The fills of the budget bars, to stand once in the page."""
+    tiles = []
+    for i, (side, turn, drawing) in enumerate(_FILLS[: len(BUDGET_SOURCES)]):
+        tiles.append(
+            f'<pattern id="b{i}" width="{side}" height="{side}" patternUnits="userSpaceOnUse" '
+            f'patternTransform="rotate({turn})"><rect width="{side}" height="{side}" '
+            f'class="light"/>{drawing}</pattern>'
+        )
+    return Markup(
+        f'<svg class="patterns" width="0" height="0" aria-hidden="true"><defs>{"".join(tiles)}'
+        "</defs></svg>"
     )
 
 

@@ -77,6 +77,7 @@ def report_html(result: RoundResult, layers: Mapping[str, Layer], crops: CropsBy
         totals=_totals(result.objects),
         verdicts=VERDICTS,
         sign=figures.sign,
+        patterns=figures.patterns(),
         cameras=_cameras(result),
         instruments=_instruments(result),
         notes=[*result.round.notes, *(result.placement.notes if result.placement else ())],

@@ -143,7 +143,8 @@ def large_round(
         places[name] = at
         taken = START + timedelta(minutes=4 * (i // 2))
         agreement = float(draw.standard_normal())
-        parts = draw.dirichlet(np.linspace(4, 1, len(BUDGET_SOURCES))) * sd**2
+        weights = np.random.default_rng(i).uniform(0.1, 1.0, len(BUDGET_SOURCES))
+        parts = weights / weights.sum() * sd**2
         readings_m = (diameter + 0.8 * sd, diameter - 0.6 * sd)
         for v, photo in enumerate(photo_names):
             photos.setdefault(
