@@ -17,6 +17,19 @@ import numpy as np
 
 
 @dataclass(frozen=True)
+class Sighting:
+    """Direction from one photo's station to a landmark it shows, in the pair's levelled frame.
+
+    direction : (3,) unit; sd_deg : of the direction, as the mark and the camera give it
+    """
+
+    landmark: str
+    photo: str
+    direction: np.ndarray
+    sd_deg: float
+
+
+@dataclass(frozen=True)
 class PairFrame:
     """Stations, sight directions and objects of one pair in its levelled frame.
 
@@ -27,6 +40,7 @@ class PairFrame:
     objects_m       : object -> (3,) point: where the axis meets the ground line (a ball's centre)
     objects_cov_m2  : object -> (3, 3) covariance of that point, relative to station A
     vertical_sd_deg : sd of the vertical about each horizontal axis
+    sightings       : of landmarks with known coordinates
     """
 
     pair: str
@@ -38,6 +52,7 @@ class PairFrame:
     objects_cov_m2: Mapping[str, np.ndarray]
     vertical_sd_deg: float
     vertical_from: str
+    sightings: tuple[Sighting, ...] = ()
 
 
 @dataclass(frozen=True)

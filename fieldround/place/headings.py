@@ -68,6 +68,7 @@ class NorthObservations:
     directions: tuple[DirectionReading, ...] = ()
     fixes_deg: float = 0.0
     fixes_weight: float = 0.0
+    fixes_source: str = "GNSS baseline"
 
 
 @dataclass(frozen=True)
@@ -131,7 +132,7 @@ def _groups(seen: NorthObservations, devices: Sequence[str]) -> list[_Group]:
         out.append(_Group(one.source, one.heading_deg, one.sd_deg**2, -1))
     if seen.fixes_weight > 0.0:
         value, sd = _summary(partial(_fixes_log, seen))
-        out.append(_Group("GNSS baseline", seen.fixes_deg, sd**2, -1))
+        out.append(_Group(seen.fixes_source, seen.fixes_deg, sd**2, -1))
     return out
 
 

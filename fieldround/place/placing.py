@@ -1,44 +1,42 @@
 """The round on the map: stations and objects in the round's CRS, each with its error ellipse.
 
 In: a `Round`, the levelled frames of its solved pairs, its GNSS baselines. Out: a `Placement`,
-None when no photo has a position.
+None when neither a photo nor a landmark has a position.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 from datetime import datetime
 
 import numpy as np
 
-from fieldround.geometry.earth import enu_from_geodetic, geodetic_from_enu
+from fieldround.geometry.earth import geodetic_from_enu
 from fieldround.place.baselines import GnssBaseline
 from fieldround.place.crs import Grid, middle, round_grid
 from fieldround.place.duplicates import near_duplicates, twin_notes
 from fieldround.place.ellipses import error_ellipse, position_sd
-from fieldround.place.fitting import FixFit, fit_fixes
-from fieldround.place.fixes import position_covariance, worth
+from fieldround.place.fitting import FixFit
+from fieldround.place.fixes import worth
 from fieldround.place.frames import PairFrame, PlacedPair, PlacedPoint, Placement
-from fieldround.place.headings import Heading, Headings, NorthObservations, round_headings
+from fieldround.place.grounds import (
+    Ground,
+    altitude_of,
+    fit_ground,
+    ground_of,
+    height_is,
+    shared_sd,
+)
+from fieldround.place.headings import Heading, Headings, round_headings
 from fieldround.place.merging import merge_spots
-from fieldround.place.north import north_observations
+from fieldround.place.north import Laid, north_observations
 from fieldround.place.spots import LocatedPair, Spot, located_spots, unturned_spots
 from fieldround.rounds.model import Fix, Pair, Photo, Round
 
-# A camera that looks straight up or down has no level direction for the arm of its antenna.
-_LEVEL_ENOUGH = 0.1
-_NO_FIX = "no photo of the pair has a GNSS position, so the pair is not on the map"
-
-
-@dataclass(frozen=True)
-class _Ground:
-    """Fixes of one pair about their own middle: origin, who has one, where."""
-
-    origin: np.ndarray
-    fixed: tuple[int, ...]
-    fixes_m: np.ndarray
-    cov_m2: np.ndarray
+_NO_FIX = (
+    "no photo of the pair has a GNSS position and no object of it is a landmark, so the pair is "
+    "not on the map"
+)
 
 
 def place_round(
@@ -51,19 +49,30 @@ def place_round(
     raises    : place.crs.CrsError when the round's CRS cannot be used
     """
     fixes = [p.fix for p in round_.photos.values() if p.fix is not None]
-    if not fixes:
-        return None
+    landmarks = {point.landmark: point for point in round_.landmarks}
     rows = {pair.pair: pair for pair in round_.pairs}
     photos = {frame.pair: _photos(round_, frame) for frame in frames}
-    grounds = {frame.pair: _ground(photos[frame.pair]) for frame in frames}
+    grounds = {f.pair: ground_of(photos[f.pair], f, landmarks) for f in frames}
+    if not fixes and not any(grounds.values()):
+        return None
+    lon, lat = _lonlat(fixes, grounds)
+    heights = [fix.altitude_m for fix in fixes if fix.altitude_m is not None]
+    place = (*middle(lon, lat), float(np.mean(heights)) if heights else 0.0)
     day = min((p.taken_at for p in round_.photos.values() if p.taken_at), key=_date, default=None)
 
-    fits = {f.pair: _fit(f, photos[f.pair], grounds[f.pair], None) for f in frames}
-    headings, remarks = _headings(rows, photos, frames, fits, _middle(fixes), day)
-    # Once more with the headings: they tell which fix stands off.
-    known = {pair: heading.heading_deg for pair, heading in headings.by_pair.items()}
-    fits = {f.pair: _fit(f, photos[f.pair], grounds[f.pair], known[f.pair]) for f in frames}
-    headings, remarks = _headings(rows, photos, frames, fits, _middle(fixes), day)
+    known: dict[str, float | None] = dict.fromkeys(photos)
+    # Twice: only with a heading is it clear which fix stands off, and whence a landmark is seen.
+    for _ in range(2):
+        fits = {f.pair: fit_ground(f, photos[f.pair], grounds[f.pair], known[f.pair])
+                for f in frames}  # fmt: skip
+        observed, remarks = {}, {}
+        for f in frames:
+            laid = Laid(f, grounds[f.pair], fits[f.pair], known[f.pair])
+            observed[f.pair], remarks[f.pair] = north_observations(
+                rows[f.pair], photos[f.pair], laid, landmarks, place, day
+            )
+        headings = round_headings(observed)
+        known = {pair: heading.heading_deg for pair, heading in headings.by_pair.items()}
 
     located: dict[str, LocatedPair] = {}
     notes: dict[str, list[str]] = {}
@@ -77,7 +86,6 @@ def place_round(
         located[frame.pair] = _located(frame, photos[frame.pair], ground, fit, heading)
         notes[frame.pair] += _fit_notes(fit, heading, baselines.get(frame.pair))
 
-    lon, lat = _lonlat(fixes)
     grid = round_grid(round_.settings.crs, lon, lat)
     pairs = {}
     for frame in frames:
@@ -117,87 +125,27 @@ def _photos(round_: Round, frame: PairFrame) -> list[Photo]:
     return [round_.photos[name] for name in frame.photos]
 
 
-def _lonlat(fixes: Sequence[Fix]) -> tuple[np.ndarray, np.ndarray]:
+def _lonlat(
+    fixes: Sequence[Fix], grounds: Mapping[str, Ground | None]
+) -> tuple[np.ndarray, np.ndarray]:
+    """Longitudes and latitudes of the round: its fixes, and pairs known by landmarks alone."""
+    lon = [fix.longitude_deg for fix in fixes]
+    lat = [fix.latitude_deg for fix in fixes]
+    bare = [ground for ground in grounds.values() if ground is not None and not ground.fixed]
     return (
-        np.array([fix.longitude_deg for fix in fixes]),
-        np.array([fix.latitude_deg for fix in fixes]),
+        np.array(lon + [float(ground.origin[0]) for ground in bare]),
+        np.array(lat + [float(ground.origin[1]) for ground in bare]),
     )
-
-
-def _middle(fixes: Sequence[Fix]) -> tuple[float, float, float]:
-    heights = [fix.altitude_m for fix in fixes if fix.altitude_m is not None]
-    return (*middle(*_lonlat(fixes)), float(np.mean(heights)) if heights else 0.0)
-
-
-def _ground(photos: Sequence[Photo]) -> _Ground | None:
-    fixed = tuple(i for i, photo in enumerate(photos) if photo.fix is not None)
-    fixes = [fix for photo in photos if (fix := photo.fix) is not None]
-    if not fixes:
-        return None
-    # Heights are left out: one height for all keeps the plane level.
-    origin = np.array(_middle(fixes))
-    lon, lat = _lonlat(fixes)
-    level = np.full(len(fixes), origin[2])
-    flat = enu_from_geodetic(np.stack([lon, lat, level], axis=-1), origin)[:, :2]
-    return _Ground(origin, fixed, flat, position_covariance([photos[i] for i in fixed]))
-
-
-def _fit(
-    frame: PairFrame,
-    photos: Sequence[Photo],
-    ground: _Ground | None,
-    heading_deg: float | None,
-) -> FixFit | None:
-    if ground is None:
-        return None
-    where = list(ground.fixed)
-    antennas = np.array([_antenna(frame, photos[i], i) for i in where])
-    own = 0.5 * np.trace(frame.stations_cov_m2[where][:, :2, :2], axis1=1, axis2=2)
-    return fit_fixes(
-        ground.fixes_m,
-        antennas,
-        ground.cov_m2 + np.diag(own),
-        heading_deg,
-    )
-
-
-def _antenna(frame: PairFrame, photo: Photo, i: int) -> np.ndarray:
-    """Where the antenna of a station is in the frame, (2,): the camera less its arm."""
-    station = frame.stations_m[i, :2]
-    level = frame.looks[i, :2]
-    length = float(np.hypot(*level))
-    if photo.fix is None or length < _LEVEL_ENOUGH:
-        return station
-    right, forward = photo.fix.arm_m
-    ahead = level / length
-    return np.asarray(station - forward * ahead - right * np.array([ahead[1], -ahead[0]]))
-
-
-def _headings(
-    rows: Mapping[str, Pair],
-    photos: Mapping[str, Sequence[Photo]],
-    frames: Sequence[PairFrame],
-    fits: Mapping[str, FixFit | None],
-    place: tuple[float, float, float],
-    day: datetime | None,
-) -> tuple[Headings, dict[str, tuple[str, ...]]]:
-    observed: dict[str, NorthObservations] = {}
-    remarks = {}
-    for frame in frames:
-        observed[frame.pair], remarks[frame.pair] = north_observations(
-            rows[frame.pair], photos[frame.pair], frame, fits[frame.pair], place, day
-        )
-    return round_headings(observed), remarks
 
 
 def _located(
-    frame: PairFrame, photos: Sequence[Photo], ground: _Ground, fit: FixFit, heading: Heading
+    frame: PairFrame, photos: Sequence[Photo], ground: Ground, fit: FixFit, heading: Heading
 ) -> LocatedPair:
     if heading.heading_deg is None:
         stations, objects = unturned_spots(frame, fit)
     else:
         stations, objects = located_spots(frame, fit, heading)
-    altitude, above = _altitude(photos, frame)
+    altitude, above = altitude_of(photos, frame)
     return LocatedPair(
         pair=frame.pair,
         origin=ground.origin,
@@ -205,31 +153,10 @@ def _located(
         stations=stations,
         objects=objects,
         photos=tuple(photos[i] for i in ground.fixed),
-        fix_sd_m=float(np.sqrt(fit.axis_var_m2)),
+        fix_sd_m=shared_sd(ground, fit),
         altitude_m=altitude,
         altitude_is=above,
     )
-
-
-def _altitude(photos: Sequence[Photo], frame: PairFrame) -> tuple[float | None, str]:
-    """Altitude of station A by the fixes, weighted, and what it is above."""
-    told: dict[str, list[tuple[float, float]]] = {}
-    for photo, station in zip(photos, frame.stations_m, strict=True):
-        fix = photo.fix
-        if fix is not None and fix.altitude_m is not None:
-            weight = 1.0 / worth(fix).vertical_sd_m ** 2
-            told.setdefault(fix.altitude_is, []).append((fix.altitude_m - station[2], weight))
-    if not told:
-        return None, "not known"
-    above = max(told, key=lambda kind: (sum(w for _, w in told[kind]), kind))
-    rows = np.array(told[above])
-    return float(rows[:, 0] @ rows[:, 1] / rows[:, 1].sum()), _above(above)
-
-
-def _above(kind: str) -> str:
-    if kind == "sea level":
-        return "height above sea level, as the fixes state it"
-    return "height above the WGS 84 ellipsoid"
 
 
 def _point(spot: Spot, located: LocatedPair, grid: Grid) -> PlacedPoint:
@@ -288,7 +215,7 @@ def _unsolved_pair(round_: Round, pair: Pair, grid: Grid) -> PlacedPair | None:
                 fix.longitude_deg,
                 fix.latitude_deg,
                 fix.altitude_m,
-                _above(fix.altitude_is) if fix.altitude_m is not None else "not known",
+                height_is(fix.altitude_is) if fix.altitude_m is not None else "not known",
                 cov,
                 grid,
             )
@@ -346,7 +273,7 @@ def _bias_notes(headings: Headings) -> list[str]:
 
 
 def _height_notes(fixes: Sequence[Fix]) -> list[str]:
-    kinds = sorted({_above(fix.altitude_is) for fix in fixes if fix.altitude_m is not None})
+    kinds = sorted({height_is(fix.altitude_is) for fix in fixes if fix.altitude_m is not None})
     if not kinds:
         return ["no fix has an altitude, so no point has an elevation"]
     return ["elevations are the " + " or the ".join(kinds) + "; no geoid model was applied"]

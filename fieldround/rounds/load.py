@@ -18,6 +18,7 @@ from fieldround.rounds.cards import (
 from fieldround.rounds.check_sheet import read_checks
 from fieldround.rounds.errors import Fault, PictureError, SheetsError
 from fieldround.rounds.exif_cards import camera_from_exif
+from fieldround.rounds.landmarks import read_landmarks
 from fieldround.rounds.marks import judge_marks, read_marks_sheet
 from fieldround.rounds.model import Camera, Photo, Round
 from fieldround.rounds.objects import objects_from_marks, read_objects, with_pairs
@@ -28,7 +29,7 @@ from fieldround.rounds.track_folder import read_tracks
 from fieldround.rounds.tracks import place_on_tracks
 
 FILES = ("round.toml", "cameras.toml", "photos", "pairs.csv", "objects.csv", "marks.csv",
-         "checks.csv")  # fmt: skip
+         "checks.csv", "landmarks.csv")  # fmt: skip
 
 
 def load_round(folder: Path) -> Round:
@@ -55,6 +56,7 @@ def load_round(folder: Path) -> Round:
     named = [name for name in dict.fromkeys(sheet.photos.values()) if name is not None]
     photos, cameras, lost, notes = _photos(folder / "photos", named, cards, faults)
     listed = read_objects(folder / "objects.csv", sheet.names, settings, faults)
+    landmarks, landmark_notes = read_landmarks(folder / "landmarks.csv", settings, faults)
     marks_sheet = read_marks_sheet(folder / "marks.csv", settings, faults)
     marks = judge_marks(
         marks_sheet,
@@ -64,6 +66,7 @@ def load_round(folder: Path) -> Round:
         {name: photo.size_px for name, photo in photos.items()},
         {one.object: one for one in listed.objects} if listed.complete else None,
         listed.names,
+        [one.landmark for one in landmarks],
     )
     objects = listed.objects
     has_sheet = (folder / "objects.csv").exists()
@@ -88,7 +91,8 @@ def load_round(folder: Path) -> Round:
         checks=checks,
         lost_photos=lost,
         notes=(*sheet.notes, *listed.notes, *marks_sheet.notes, *check_notes, *notes,
-               *tracks.notes, *track_notes),
+               *landmark_notes, *tracks.notes, *track_notes),
+        landmarks=landmarks,
     )
 
 

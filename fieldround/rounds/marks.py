@@ -15,7 +15,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from fieldround.rounds.errors import Fault, SheetsError
-from fieldround.rounds.model import MARK_NAMES, Mark, RoundObject, Settings
+from fieldround.rounds.model import MARK_NAMES, OTHERS_NAMES, Mark, RoundObject, Settings
 from fieldround.rounds.photos import PhotoFolder
 from fieldround.rounds.sheets import Row, nearest_hint, read_table
 
@@ -91,6 +91,7 @@ def judge_marks(
     sizes: Mapping[str, tuple[int, int]],
     objects: Mapping[str, RoundObject] | None,
     object_names: Sequence[str],
+    landmarks: Sequence[str] = (),
 ) -> tuple[Mark, ...]:
     """The marks with their photos' names as on disk; whatever does not fit the round is a fault.
 
@@ -98,12 +99,13 @@ def judge_marks(
     paired         : photos of the pairs; sizes : upright sizes of those that could be read
     objects        : of objects.csv by name, None when there is no such sheet
     object_names   : every id written in objects.csv
+    landmarks      : names in landmarks.csv
     """
     marks = []
     finder = _PhotoFinder(folder, written_photos, paired)
     ties: dict[tuple[str, str], int] = {}
     for row, mark in sheet.marks:
-        if objects is not None and mark.mark not in ("tie", "plumb") and mark.object:
+        if objects is not None and mark.mark not in OTHERS_NAMES and mark.object:
             if mark.object not in object_names:
                 remedy = "objects.csv has no such object; add it there or correct the name"
                 row.fault("object", mark.object, remedy + nearest_hint(mark.object, object_names))
@@ -112,6 +114,9 @@ def judge_marks(
                 if kind != "ball":
                     remedy = f"the object is a {kind}; mark its limbs left and right"
                     row.fault("mark", mark.mark, remedy)
+        if mark.mark == "landmark" and mark.object and mark.object not in landmarks:
+            remedy = "landmarks.csv has no such landmark; add it there with its coordinates"
+            row.fault("object", mark.object, remedy + nearest_hint(mark.object, landmarks))
         photo = finder.find(row, mark.photo)
         if photo is None:
             continue

@@ -15,7 +15,10 @@ from types import MappingProxyType
 from fieldround.rounds.track_settings import TrackSettings
 
 KINDS = ("pole", "trunk", "mast", "bollard", "tank", "pipe", "ball")
-MARK_NAMES = ("left", "right", "outline", "middle", "base", "top", "tie", "plumb")
+MARK_NAMES = ("left", "right", "outline", "middle", "base", "top", "tie", "plumb",
+              "landmark")  # fmt: skip
+# Marks whose `object` column holds a name of its own, not an object of the round.
+OTHERS_NAMES = ("tie", "plumb", "landmark")
 
 _EMPTY: Mapping[str, str] = MappingProxyType({})
 
@@ -151,8 +154,8 @@ class RoundObject:
 class Mark:
     """One pixel position that means something, in the photo turned upright.
 
-    x right, y down; (0, 0) is the centre of the top-left pixel. `object` holds the tie's or the
-    plumb line's own name for the marks `tie` and `plumb`.
+    x right, y down; (0, 0) is the centre of the top-left pixel. `object` holds the tie's, the
+    plumb line's or the landmark's own name for the marks `tie`, `plumb` and `landmark`.
     """
 
     object: str
@@ -176,6 +179,19 @@ class Check:
     measured_on: str = ""
     by: str = ""
     extra: Mapping[str, str] = field(default_factory=lambda: _EMPTY)
+    row: int | None = None
+
+
+@dataclass(frozen=True)
+class Landmark:
+    """A point of known coordinates, WGS 84 degrees; sd_m is that of each horizontal axis."""
+
+    landmark: str
+    longitude_deg: float
+    latitude_deg: float
+    height_m: float | None = None
+    sd_m: float = 0.1
+    note: str = ""
     row: int | None = None
 
 
@@ -229,3 +245,4 @@ class Round:
     checks: tuple[Check, ...] = ()
     lost_photos: Mapping[str, str] = field(default_factory=lambda: _EMPTY)
     notes: tuple[str, ...] = ()
+    landmarks: tuple[Landmark, ...] = ()

@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from fieldround.rounds.errors import Fault
-from fieldround.rounds.model import KINDS, Mark, Pair, RoundObject, Settings
+from fieldround.rounds.model import KINDS, OTHERS_NAMES, Mark, Pair, RoundObject, Settings
 from fieldround.rounds.sheets import Row, Table, nearest_hint, read_table
 
 COLUMNS = ("object", "kind", "pair", "label", "ref_height_m", "known_diameter_m", "known_sd_m",
@@ -65,7 +65,7 @@ def objects_from_marks(marks: Iterable[Mark], settings: Settings) -> tuple[Round
     """
     kinds: dict[str, str] = {}
     for mark in marks:
-        if mark.mark in ("tie", "plumb"):
+        if mark.mark in OTHERS_NAMES:
             continue
         kinds.setdefault(mark.object, settings.kind)
         if mark.mark == "outline":
@@ -83,7 +83,7 @@ def with_pairs(
             by_photo.setdefault(photo, []).append(pair.pair)
     marked: dict[str, set[str]] = {}
     for mark in marks:
-        if mark.mark not in ("tie", "plumb"):
+        if mark.mark not in OTHERS_NAMES:
             marked.setdefault(mark.object, set()).update(by_photo.get(mark.photo, ()))
     order = {pair.pair: place for place, pair in enumerate(pairs)}
     return tuple(

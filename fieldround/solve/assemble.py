@@ -13,7 +13,7 @@ import numpy as np
 
 from fieldround.geometry.camera import rays, to_card, up_in_card
 from fieldround.place.baselines import GnssBaseline
-from fieldround.rounds.model import Camera, Mark, Pair, Round, RoundObject
+from fieldround.rounds.model import OTHERS_NAMES, Camera, Mark, Pair, Round, RoundObject
 from fieldround.solve.kinds import KIND_EXPECTATIONS
 from fieldround.solve.problem import LengthObservation, Marks, PairProblem, SolidObject
 from fieldround.vision.ties import Ties
@@ -75,12 +75,13 @@ def assemble_pair(
     lost: dict[str, str] = {}
     things: list[SolidObject] = []
     index: dict[str, int] = {}
-    in_pair = [name for name in listed if any(mark.object == name for mark in mine)]
+    named = {mark.object for mark in mine if mark.mark not in OTHERS_NAMES}
+    in_pair = [name for name in listed if name in named]
     in_pair += [
         name for name in listed if name not in in_pair and listed[name].pairs == (pair.pair,)
     ]
     for name in in_pair:
-        own = [mark for mark in mine if mark.object == name and mark.mark not in ("tie", "plumb")]
+        own = [mark for mark in mine if mark.object == name and mark.mark not in OTHERS_NAMES]
         reason = _why_not(listed[name], own, pair)
         if reason:
             lost[name] = reason

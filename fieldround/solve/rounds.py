@@ -22,6 +22,7 @@ from fieldround.solve.derive import pair_frame
 from fieldround.solve.pairwise import PairStart, common_start, solve_alone
 from fieldround.solve.results import ObjectResult, PairResult, Reading
 from fieldround.solve.rows import SolvedPair, solved_pair
+from fieldround.solve.sightings import with_sightings
 from fieldround.solve.state import CAMERA_VALUES
 from fieldround.vision.ties import Ties
 
@@ -99,7 +100,7 @@ def solve_round(
         start, end, index = ended[pair.pair]
         told = [remarks[i] for i in start.fit.layout.camera_ids if i in remarks]
         solved[pair.pair] = solved_pair(round_, pair, start, end, index, marks, told, draws)
-        frames.append(pair_frame(end, index))
+        frames.append(with_sightings(pair_frame(end, index), end, index, round_, marks))
     objects, chosen = combined_objects(round_, solved, refused, lost, covariance)
     leans = {
         name: (seen.result.pair, seen.finding.lean_frame_deg)

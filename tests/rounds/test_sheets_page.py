@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from fieldround.rounds import cards, check_sheet, marks, objects, pairs, settings
+from fieldround.rounds import cards, check_sheet, landmarks, marks, objects, pairs, settings
 from fieldround.rounds.exif_cards import DISTORTION_SD, FOCAL_SD, GUESS_ANGLE_DEG, GUESS_SD
 from fieldround.rounds.model import KINDS, MARK_NAMES, Settings
 
@@ -25,6 +25,7 @@ def chapter(title: str) -> str:
         ("objects.csv", (*objects.COLUMNS, *KINDS)),
         ("marks.csv", (*marks.COLUMNS, *MARK_NAMES)),
         ("checks.csv", check_sheet.COLUMNS),
+        ("landmarks.csv", landmarks.COLUMNS),
         ("cameras.toml", cards.KEYS),
         ("round.toml", [key for keys in settings.SECTIONS.values() for key in keys]),
         ("round.toml", [f"[{section}]" for section in settings.SECTIONS]),
@@ -42,6 +43,7 @@ def test_every_word_is_explained(title: str, words: list[str]) -> None:
         ("objects.csv", objects.COLUMNS, objects.REQUIRED),
         ("marks.csv", marks.COLUMNS, marks.REQUIRED),
         ("checks.csv", check_sheet.COLUMNS, check_sheet.REQUIRED),
+        ("landmarks.csv", landmarks.COLUMNS, landmarks.REQUIRED),
     ],
 )
 def test_needed_columns_are_marked(
