@@ -7,6 +7,7 @@ are drawn, not photographed.
 from __future__ import annotations
 
 import functools
+import zlib
 from collections.abc import Callable
 from dataclasses import replace
 from datetime import datetime, timedelta, timezone
@@ -90,12 +91,10 @@ def _drawings(i: int, photos: tuple[str, ...], kind: str) -> tuple[Drawing, ...]
     return tuple(drawn)
 
 
-@functools.lru_cache(maxsize=64)
-def picture(name: str) -> np.ndarray:
-    """A drawn scene: sky, ground, a few upright bands with noise; the same for the same name."""
+@functools.cache
+def _scene() -> tuple[np.ndarray, np.ndarray]:
+    """Sky, ground and a few upright bands, and noise for them."""
     width, height = PICTURE
-    seed = np.frombuffer(name.encode() + b"\0" * 8, np.uint8)[:8].astype(np.uint32)
-    draw = np.random.default_rng(seed)
     y, x = np.mgrid[0:height, 0:width].astype(np.float32)
     shown = np.stack([150 + 60 * y / height, 170 + 40 * y / height, 205 - 70 * y / height], -1)
     shown[y > 560] = (118, 122, 92)
@@ -104,8 +103,15 @@ def picture(name: str) -> np.ndarray:
         band &= (y > 110) & (y < 790)
         shade = 96 + 60 * np.cos((x - middle) / 33 * 1.4)
         shown[band] = np.stack([shade, 0.86 * shade, 0.7 * shade], -1)[band]
-    shown += draw.normal(0.0, 6.0, (height, width, 1))
-    return np.clip(shown, 0, 255).astype(np.uint8)
+    noise = np.random.default_rng(5).normal(0.0, 6.0, (height, width)).astype(np.int16)
+    return np.clip(shown, 20, 235).astype(np.int16), noise
+
+
+def picture(name: str) -> np.ndarray:
+    """A drawn scene; the same for the same name, with other noise for another."""
+    shown, noise = _scene()
+    moved = np.roll(noise, zlib.crc32(name.encode()) % noise.size)
+    return np.clip(shown + moved[..., None], 0, 255).astype(np.uint8)
 
 
 def large_round(
