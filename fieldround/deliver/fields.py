@@ -164,7 +164,7 @@ TABLES = (
         "sections",
         "POLYGON",
         "Sections",
-        "The circle of the found diameter around the object's point, true to scale.",
+        "The circle of the found diameter around the object's point, true to scale (a pipe's too).",
         (_OBJECT, _KIND, _VERDICT, _DIAMETER, _LO, _HI, _REF_HEIGHT),
     ),
     Table(

@@ -6,10 +6,8 @@ In: a `RoundResult` and the folder the files will lie in. Out: a `Layer` for eac
 
 from __future__ import annotations
 
-import functools
 import itertools
 import math
-import os
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -20,9 +18,9 @@ import numpy as np
 from fieldround import __version__
 from fieldround.deliver import shapes
 from fieldround.deliver.fields import BY_NAME, COORDINATE_FIELDS, Field, Table, passed_through
+from fieldround.deliver.places import photo_path, place_of, station_of
 from fieldround.deliver.times import in_utc, local_time, time_span
 from fieldround.place.frames import PlacedPoint, Placement
-from fieldround.rounds.model import Round
 from fieldround.solve.results import ObjectResult, RoundResult
 
 VIEWS = "ABCDEFGHIJKLMNOPQRSTUVWXYZ"
@@ -76,11 +74,6 @@ def coordinates(result: RoundResult) -> list[tuple[Value, ...]]:
     return list(zip(*columns, strict=True))
 
 
-def place_of(result: RoundResult, name: str) -> PlacedPoint | None:
-    """Where an object stands, or None."""
-    return None if result.placement is None else result.placement.objects.get(name)
-
-
 def settled(field: Field, values: Sequence[Any]) -> list[Value]:
     """A field's values as they are written: rounded to its digits; NaN and infinity are None."""
     if field.type == "INTEGER":
@@ -94,23 +87,6 @@ def settled(field: Field, values: Sequence[Any]) -> list[Value]:
     if field.type == "TEXT":
         return [None if v is None else str(v) for v in values]
     return [str(v) if v else None for v in values]
-
-
-def photo_path(round_: Round, name: str | None, out_dir: Path) -> str | None:
-    """Path of a photo relative to the results, with forward slashes; None for a lost photo."""
-    photo = round_.photos.get(name) if name else None
-    if photo is None:
-        return None
-    folder, file = os.path.split(photo.path)
-    return f"{_relative(folder, str(out_dir))}/{file}"
-
-
-@functools.lru_cache(maxsize=256)
-def _relative(folder: str, start: str) -> str:
-    try:
-        return Path(os.path.relpath(folder, start)).as_posix()
-    except ValueError:  # another drive: no relative path exists
-        return Path(folder).as_posix()
 
 
 class _Frame:
@@ -131,10 +107,6 @@ class _Frame:
                 np.array([at.latitude_deg for _, at in placed]),
             )
             self._axes = {name: axes[i] for i, (name, _) in enumerate(placed)}
-
-    def station(self, pair: str, photo: str) -> PlacedPoint | None:
-        placed = None if self.placement is None else self.placement.pairs.get(pair)
-        return None if placed is None else placed.stations.get(photo)
 
     def ellipses(
         self, names: Sequence[str], size: Callable[[str], tuple[float, float, float] | None]
@@ -247,7 +219,7 @@ def _stations(frame: _Frame) -> Layer:
     for pair in frame.result.pairs:
         for view, name in zip(VIEWS, pair.photos, strict=False):
             photo = frame.result.round.photos.get(name)
-            at = frame.station(pair.pair, name)
+            at = station_of(frame.result, pair.pair, name)
             taken = None if photo is None else photo.taken_at
             records.append(
                 {
@@ -303,7 +275,7 @@ def _sightlines(frame: _Frame) -> Layer:
                         "verdict": frame.objects[name].verdict,
                     }
                 )
-                starts.append(frame.station(pair.pair, photo))
+                starts.append(station_of(frame.result, pair.pair, photo))
                 ends.append(frame.places[name])
     return _layer("sightlines", records, shapes.lines(_grids(starts), _grids(ends)))
 

@@ -17,8 +17,10 @@ from branca.element import Element, Figure, MacroElement, Template
 
 from fieldround.deliver import leaflet
 from fieldround.deliver.crops import Crop, CropsByView
-from fieldround.deliver.layers import VIEWS, Layer, place_of
+from fieldround.deliver.facts import plain
+from fieldround.deliver.layers import VIEWS, Layer
 from fieldround.deliver.pages import environment, part, path, script_json
+from fieldround.deliver.places import place_of, station_of
 from fieldround.deliver.times import local_dates
 from fieldround.rounds.model import KINDS
 from fieldround.solve.results import VERDICTS, RoundResult
@@ -98,7 +100,7 @@ def map_html(result: RoundResult, layers: Mapping[str, Layer], crops: CropsByVie
     figure._template = environment().get_template("map.html.j2")
     return figure.render(
         content=content,
-        content_json=script_json(content),
+        content_json=script_json(plain(content)),
         crops_json=script_json(_crops(result, crops)),
     )
 
@@ -191,9 +193,8 @@ def _sights(
     stations: list[list[Any]] = []
     index: dict[tuple[str, str], int] = {}
     for pair in result.pairs:
-        placed = None if result.placement is None else result.placement.pairs.get(pair.pair)
         for view, photo in zip(VIEWS, pair.photos, strict=False):
-            at = None if placed is None else placed.stations.get(photo)
+            at = station_of(result, pair.pair, photo)
             spot = None if at is None else [round(at.latitude_deg, 9), near(at.longitude_deg)]
             index[pair.pair, photo] = len(stations)
             sd = None if at is None else round(at.position_sd_m, 3)

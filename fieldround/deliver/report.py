@@ -18,8 +18,9 @@ from markupsafe import Markup
 from fieldround import __version__
 from fieldround.deliver import figures
 from fieldround.deliver.crops import Crop, CropsByView
-from fieldround.deliver.layers import VIEWS, Layer, place_of
+from fieldround.deliver.layers import VIEWS, Layer
 from fieldround.deliver.pages import environment, part
+from fieldround.deliver.places import place_of, station_of
 from fieldround.deliver.shapes import degrees_per_metre
 from fieldround.deliver.times import local_dates
 from fieldround.place.frames import PlacedPoint
@@ -151,7 +152,11 @@ def _card(result: RoundResult, found: ObjectResult, crops: CropsByView) -> Card:
         own = [
             (letters[r.photo], r.diameter_m, r.sd_m)
             for r in result.readings
-            if r.object == found.object and r.pair == found.pair and r.photo in letters
+            if r.object == found.object
+            and r.pair == found.pair
+            and r.photo in letters
+            and math.isfinite(r.diameter_m)
+            and math.isfinite(r.sd_m)
         ]
         scale = figures.readings_scale(
             own, found.diameter_m, found.diameter_lo_m, found.diameter_hi_m
@@ -236,7 +241,8 @@ def _sketch(result: RoundResult, layers: Mapping[str, Layer]) -> Markup:
     spots = {
         (pair, photo): local(at)
         for pair, placed in placement.pairs.items()
-        for photo, at in placed.stations.items()
+        for photo in placed.stations
+        if (at := station_of(result, pair, photo)) is not None
     }
     places = {
         f.object: local(at)

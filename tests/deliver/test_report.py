@@ -28,7 +28,8 @@ def page(tmp_path_factory):
 
 def test_nothing_in_the_page_is_loaded_from_anywhere(page):
     assert not re.search(r"<(script|link|img|iframe|object|embed)\b", page)
-    assert "http" not in page.replace("http-equiv", "")
+    text = re.sub(r"base64,[A-Za-z0-9+/=]+", "", page)
+    assert "http" not in text.replace("http-equiv", "")
     assert set(re.findall(r'href="([^"]{0,11})', page)) == {"data:image/"}
     assert "url(" not in re.sub(r"url\(#b\d\)", "", page)
 

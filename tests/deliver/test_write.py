@@ -7,8 +7,10 @@ import pytest
 
 from fieldround.deliver.facts import facts
 from fieldround.deliver.write import WriteError, write_results
+from fieldround.place.frames import Ellipse
 from fieldround.rounds.errors import PictureError
 from tests.deliver import invented
+from tests.deliver.geopackage_rules import faults
 
 NAMES = {"results.gpkg", "results.csv", "results.geojson", "run.json", "map.html", "report.html"}
 
@@ -119,3 +121,32 @@ def test_run_json_holds_no_nan_and_merges_the_runs_counts():
     assert told["odd"] is None
     assert told["seen"] == ["a", "b"]
     json.dumps(told, allow_nan=False)
+
+
+def test_places_that_are_no_numbers_are_no_places(tmp_path):
+    result = invented.small_round(tmp_path)
+    placement = result.placement
+    name, pair = result.objects[0].object, result.pairs[0].pair
+    nowhere = replace(placement.objects[name], easting_m=float("nan"))
+    vague = replace(
+        placement.objects["B004"],
+        ellipse=Ellipse(float("nan"), float("nan"), 0.0),
+        position_sd_m=float("nan"),
+    )
+    stations = dict(placement.pairs[pair].stations)
+    stations["P01a.jpg"] = replace(stations["P01a.jpg"], longitude_deg=float("inf"))
+    broken = replace(
+        placement,
+        objects={**placement.objects, name: nowhere, "B004": vague},
+        pairs={**placement.pairs, pair: replace(placement.pairs[pair], stations=stations)},
+    )
+    reading = replace(result.readings[0], sd_m=float("nan"))
+    write_results(
+        replace(result, placement=broken, readings=(reading, *result.readings[1:])),
+        tmp_path / "out",
+    )
+    assert faults(tmp_path / "out" / "results.gpkg") == []
+    rows = (tmp_path / "out" / "results.csv").read_text("utf-8")
+    assert "nan" not in rows.lower()
+    report = (tmp_path / "out" / "report.html").read_text("utf-8")
+    assert "nan" not in report.lower().replace("quadrance", "")

@@ -324,7 +324,8 @@ function showRound(map, groups, background) {
   map.invalidateSize({ animate: false });
   fit(everything());
   filter();
-  var named = decodeURIComponent(location.hash.replace(/^#object=/, ""));
+  var named = location.hash.replace(/^#object=/, "");
+  try { named = decodeURIComponent(named); } catch (error) { /* a name with a bare % */ }
   var asked = location.hash && rows.find(function (row) { return row.object === named; });
   if (asked) { choose(asked, false); }
   document.documentElement.setAttribute("data-ready", "yes");
