@@ -35,7 +35,7 @@ def limb_points(
     u = across / distance[:, None]
     v = side * np.cross(axis, u)
     # The surface normal leans by the taper: n . (station - contact) = 0 with n = (cos, sin, -t).
-    cosine = (radii - taper * along) / distance
+    cosine = (radii + taper * along) / distance
     with np.errstate(invalid="ignore"):
         sine = np.sqrt(1.0 - cosine**2)
     return centres + radii[:, None] * (cosine[:, None] * u + sine[:, None] * v)

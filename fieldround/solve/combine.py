@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from typing import Any
 
 import numpy as np
 from scipy.stats import chi2
@@ -61,8 +62,9 @@ def _mean(
     reasons = list(best.result.reasons)
     if left_out:
         reasons.append(f"pair {', '.join(left_out)} was left out: it is not fit by itself")
+    whole = replace(best.result, **_seen_elsewhere(best, group))
     if len(fit) == 1:
-        return replace(best.result, pair=names, views=views, reasons=tuple(reasons))
+        return replace(whole, pair=names, views=views, reasons=tuple(reasons))
     values = np.array([s.finding.diameter_m for s in fit])
     cov = np.diag([(s.result.diameter_sd_m or 0.0) ** 2 for s in fit])
     roundness = [s.result.budget.get("roundness", 0.0) for s in fit]
@@ -91,7 +93,7 @@ def _mean(
     low, high = linear_interval(mean, sd)
     scale = sd**2 / max(sum(best.result.budget.values()), 1e-300)
     return replace(
-        best.result,
+        whole,
         pair=names,
         views=views,
         verdict=verdict,
@@ -103,6 +105,18 @@ def _mean(
         girth_m=float(np.pi * mean),
         budget={source: part * scale for source, part in best.result.budget.items()},
     )
+
+
+def _seen_elsewhere(best: SolvedObject, group: Sequence[SolvedObject]) -> dict[str, Any]:
+    """Height and ground diameter from another pair where the best one does not show them."""
+    found: dict[str, Any] = {}
+    for names in (("height_m", "height_sd_m"), ("ground_diameter_m",)):
+        if getattr(best.result, names[0]) is not None:
+            continue
+        other = next((s for s in group if getattr(s.result, names[0]) is not None), None)
+        if other is not None:
+            found.update({name: getattr(other.result, name) for name in names})
+    return found
 
 
 def _shared_variance(

@@ -278,7 +278,7 @@ def common_start(
     strangers: list[PairStart] = []
     information = {id(s): _camera_information(s) for s in starts}
     while True:
-        values = _weighted_values(together, information, priors)
+        values, _ = _weighted_values(together, information, priors)
         if len(together) < 3:
             return together, values, strangers
         worst, worst_size = None, STRANGER_LIMIT
@@ -287,10 +287,15 @@ def common_start(
             ids = list(s.fit.layout.camera_ids)
             if not any(set(ids) & set(o.fit.layout.camera_ids) for o in rest):
                 continue
-            without = _weighted_values(rest, information, priors)
+            without, known = _weighted_values(rest, information, priors)
             own = CameraPriors(without[ids], priors.sds[ids], priors.heavy[ids])
-            departure = (departures(own, s.values[ids]) * free_values(own)).ravel()
-            size = float(departure @ information[id(s)] @ departure)
+            columns, free = shared_columns(s.fit.layout), free_values(own).ravel()
+            departure = departures(own, s.values[ids]).ravel()[free]
+            size = _squared_sds(
+                departure,
+                information[id(s)][np.ix_(free, free)],
+                known[np.ix_(columns[free], columns[free])],
+            )
             if size > worst_size:
                 worst, worst_size = s, size
         if worst is None:
@@ -319,7 +324,8 @@ def _camera_information(start: PairStart) -> np.ndarray:
 
 def _weighted_values(
     starts: Sequence[PairStart], information: dict[int, np.ndarray], priors: CameraPriors
-) -> np.ndarray:
+) -> tuple[np.ndarray, np.ndarray]:
+    """Camera values (m, 9) on which the pairs and the priors agree, and their normal matrix."""
     m = len(priors.values)
     diagonal, _, _ = prior_terms(priors, priors.values)
     normal, right = np.diag(diagonal.ravel()), np.zeros(CAMERA_VALUES * m)
@@ -332,4 +338,13 @@ def _weighted_values(
     step = np.zeros(CAMERA_VALUES * m)
     if free.any():
         step[free] = solve_scaled(normal[np.ix_(free, free)], right[free])
-    return values_moved(priors.values, step.reshape(m, CAMERA_VALUES))
+    return values_moved(priors.values, step.reshape(m, CAMERA_VALUES)), normal
+
+
+def _squared_sds(departure: np.ndarray, own: np.ndarray, rest: np.ndarray) -> float:
+    """Squared departure in sds of a difference of two estimates, from their normal matrices.
+
+    The covariance of the difference is own^-1 + rest^-1; its inverse is own (own + rest)^-1 rest,
+    which needs neither of them to be invertible by itself.
+    """
+    return float(departure @ own @ solve_scaled(own + rest, rest @ departure))

@@ -50,4 +50,3 @@ def with_sightings(
         direction = turn @ fit.state.rotations[view].T @ ray
         sightings.append(Sighting(mark.object, mark.photo, direction, float(np.degrees(sd))))
     return replace(frame, sightings=tuple(sightings))
-

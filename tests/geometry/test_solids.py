@@ -18,11 +18,20 @@ def test_a_ray_to_a_limb_touches_the_cone_and_goes_on_outside(taper, radius, sid
     point, axis = np.array([0.2, 0.1, 0.0]), np.array([0.02, -0.03, 1.0])
     axis /= np.linalg.norm(axis)
     limb = limb_points(station, point, axis, radius, taper, np.linspace(0.0, 3.0, 7), side)
-    for share in np.linspace(0.8, 1.2, 41):
+    for share in 1.0 + np.concatenate([np.linspace(-0.2, 0.2, 41), np.linspace(-1e-3, 1e-3, 41)]):
         on_ray = station + share * (limb - station) - point
         height = on_ray @ axis
         outside = np.linalg.norm(on_ray - height[:, None] * axis, axis=1)
         assert np.all(outside >= radius + taper * height - 1e-9)
+
+
+def test_the_normal_at_a_limb_is_square_to_the_sight_line():
+    station, axis = np.array([2.0, -9.0, 1.6]), np.array([0.0, 0.0, 1.0])
+    heights, taper = np.linspace(0.0, 5.0, 6), -0.01
+    limb = limb_points(station, np.zeros(3), axis, 0.3, taper, heights, -1.0)
+    radial = limb - heights[:, None] * axis
+    normal = radial / np.linalg.norm(radial, axis=1, keepdims=True) - taper * axis
+    assert np.allclose(np.einsum("ni,ni->n", normal, station - limb), 0.0, atol=1e-12)
 
 
 def test_the_touching_distance_is_the_radius_to_second_order_in_the_taper():

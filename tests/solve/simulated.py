@@ -8,6 +8,7 @@ import numpy as np
 
 from fieldround.geometry.camera import project
 from fieldround.geometry.rotations import rotation_from_vector
+from fieldround.geometry.solids import limb_points
 from fieldround.solve.problem import LengthObservation, Marks, PairProblem, SolidObject
 from fieldround.solve.state import PairState
 
@@ -36,33 +37,6 @@ def look_at(direction: np.ndarray, roll: float = 0.0) -> np.ndarray:
     x /= np.linalg.norm(x)
     rows = np.array([x, np.cross(z, x), z])
     return rotation_from_vector(np.array([0.0, 0.0, roll])) @ rows
-
-
-def limb_points(
-    station: np.ndarray,
-    base: np.ndarray,
-    axis: np.ndarray,
-    radius: float,
-    taper: float,
-    heights: np.ndarray,
-    side: float,
-) -> np.ndarray:
-    """Points on the limb of a cone at given heights, exact tangency, (n, 3)."""
-    out = []
-    for height in heights:
-        centre = base + height * axis
-        r = radius + taper * height
-        away = station - centre
-        across = away - (away @ axis) * axis
-        distance = np.linalg.norm(across)
-        u = across / distance
-        v = np.cross(axis, u) * side
-        # The normal of a cone leans by its taper: (contact - apex) . n = 0 seen from the station.
-        height_away = away @ axis
-        cosine = (r - taper * height_away) / distance
-        sine = np.sqrt(1.0 - cosine**2)
-        out.append(centre + r * (cosine * u + sine * v))
-    return np.array(out)
 
 
 def simulated_pair(
