@@ -16,6 +16,7 @@ from fieldround import __version__
 COMMANDS = {
     "start": "fieldround.cli.start_command:start",
     "run": "fieldround.cli.run_command:run",
+    "lists": "fieldround.cli.lists_command:lists",
     "camera": "fieldround.cli.camera_commands:camera",
 }
 
