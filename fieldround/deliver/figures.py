@@ -6,7 +6,7 @@ In: numbers. Out: SVG elements as safe markup (every word in them is escaped).
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 
 import numpy as np
 from markupsafe import Markup, escape
@@ -36,7 +36,7 @@ _FILLS = (
 _PATTERNS = {source: f"#b{i % len(_FILLS)}" for i, source in enumerate(BUDGET_SOURCES)}
 _ROW_LEFT = 96.0
 _RIGHT = 330.0
-_SIGNS = {
+SIGNS = {
     "accept": '<circle r="3.4" class="v-accept"/>',
     "remeasure": '<path d="M0-4.8L4.6 3.4H-4.6Z" class="v-remeasure"/>',
     "no result": '<path d="M-3.4-3.4h6.8v6.8h-6.8ZM-3.4-3.4l6.8 6.8M-3.4 3.4l6.8-6.8"'
@@ -47,7 +47,7 @@ _SIGNS = {
 def sign(verdict: str) -> Markup:
     """The verdict's sign as a small drawing beside a word."""
     return Markup(
-        f'<svg class="sign" viewBox="-6 -6 12 12" aria-hidden="true">{_SIGNS[verdict]}</svg>'
+        f'<svg class="sign" viewBox="-6 -6 12 12" aria-hidden="true">{SIGNS[verdict]}</svg>'
     )
 
 
@@ -79,7 +79,8 @@ def _ticks(low: float, high: float, most: int) -> list[float]:
     return [float(t) for t in np.arange(math.ceil(low / step - 1e-9), high / step + 1e-9) * step]
 
 
-def _digits(step: float) -> int:
+def digits_of(step: float) -> int:
+    """Decimals that a step of a scale needs."""
     return max(0, -math.floor(math.log10(step) + 1e-9))
 
 
@@ -100,33 +101,24 @@ def readings_scale(
     def x(value: float) -> float:
         return left + (value - low) / (high - low) * (right - left)
 
-    rows = [(f"view {view}", d, d - 2.0 * sd, d + 2.0 * sd, False) for view, d, sd in readings]
-    rows.append(
-        (
-            "diameter",
-            diameter_m,
-            diameter_m if low_m is None else low_m,
-            diameter_m if high_m is None else high_m,
-            True,
-        )
-    )
+    rows: list[tuple[str, float, float | None, float | None]] = [
+        (f"view {view}", d, d - 2.0 * sd, d + 2.0 * sd) for view, d, sd in readings
+    ]
+    rows.append(("diameter", diameter_m, low_m, high_m))
     parts = []
-    for i, (name, middle, start, end, last) in enumerate(rows):
-        y = 12 + 17 * i
+    for i, (name, middle, start, end) in enumerate(rows):
+        y, last = 12 + 17 * i, i == len(rows) - 1
         kind = "result" if last else "reading"
-        dot = (
+        parts.append(word(left - 6, y + 3.5, name, "", "end"))
+        parts.append(_whisker(x, y, middle, start, end, (left, right), kind))
+        parts.append(
             f'<rect x="{x(middle) - 3:.1f}" y="{y - 3}" width="6" height="6" class="{kind}"/>'
             if last
             else f'<circle cx="{x(middle):.1f}" cy="{y}" r="3" class="{kind}"/>'
         )
-        parts.append(
-            f'<text x="{left - 6}" y="{y + 3.5}" text-anchor="end">{escape(name)}</text>'
-            f'<path d="M{x(start):.1f} {y}H{x(end):.1f}M{x(start):.1f} {y - 4}v8'
-            f'M{x(end):.1f} {y - 4}v8" class="bar {kind}"/>{dot}'
-        )
     base = 12 + 17 * len(rows) - 4
     ticks = _ticks(low, high, 5)
-    digits = max(3, _digits(ticks[1] - ticks[0])) if len(ticks) > 1 else 3
+    digits = max(3, digits_of(ticks[1] - ticks[0])) if len(ticks) > 1 else 3
     for tick in ticks:
         parts.append(
             f'<path d="M{x(tick):.1f} {base}v4" class="axis"/>'
@@ -134,7 +126,32 @@ def readings_scale(
             f"{tick:.{digits}f}</text>"
         )
     parts.append(f'<path d="M{left} {base}H{right}" class="axis"/>')
-    return _svg(340, base + 18, parts, "readings", "Readings and diameter on one scale, metres")
+    return svg(340, base + 18, parts, "readings", "Readings and diameter on one scale, metres")
+
+
+def _whisker(
+    x: Callable[[float], float],
+    y: float,
+    middle: float,
+    start: float | None,
+    end: float | None,
+    edges: tuple[float, float],
+    kind: str,
+) -> str:
+    """A line from end to end with caps; an end that is open runs to the edge as an arrow."""
+    if start is None and end is None:
+        start = end = middle
+    caps = ""
+    ends = []
+    for value, edge, back in ((start, edges[0], 5), (end, edges[1], -5)):
+        at = edge if value is None else x(value)
+        ends.append(at)
+        caps += (
+            f"M{at + back:.1f} {y - 4}L{at:.1f} {y}l{back} 4"
+            if value is None
+            else f"M{at:.1f} {y - 4}v8"
+        )
+    return f'<path d="M{ends[0]:.1f} {y}H{ends[1]:.1f}{caps}" class="bar {kind}"/>'
 
 
 def budget_bar(budget: Mapping[str, float]) -> Markup:
@@ -164,7 +181,7 @@ def budget_bar(budget: Mapping[str, float]) -> Markup:
         )
         column += 1
     high = 22 + 14 * ((column + 2) // 3)
-    return _svg(340, high, parts + key, "budget", "Share of each source in the variance")
+    return svg(340, high, parts + key, "budget", "Share of each source in the variance")
 
 
 def histogram(
@@ -196,7 +213,7 @@ def histogram(
             continue
         y = base - tick / peak * (base - top_y)
         parts.append(f'<path d="M{left} {y:.1f}H{right}" class="faint"/>')
-        parts.append(_word(left - 4, y + 3, f"{tick:.0f}", "small", "end"))
+        parts.append(word(left - 4, y + 3, f"{tick:.0f}", "small", "end"))
     for i, n in enumerate(counts):
         high_px = n / peak * (base - top_y)
         parts.append(
@@ -212,7 +229,7 @@ def histogram(
         more = "≥ " if i + every > classes and float(data.max()) > (first + classes) * step else ""
         parts.append(
             f'<text x="{left + i * wide:.1f}" y="{base + 12}" text-anchor="middle" class="small">'
-            f"{more if i == classes else ''}{number((first + i) * step, _digits(step))}</text>"
+            f"{more if i == classes else ''}{number((first + i) * step, digits_of(step))}</text>"
         )
     for limit in limits:
         parts.append(f'<path d="M{x(limit):.1f} {top_y - 4}V{base}" class="limit"/>')
@@ -221,7 +238,7 @@ def histogram(
         f'<text x="{right}" y="{base + 25}" text-anchor="end" class="small">{escape(unit)}, '
         f"n = {len(data)}</text>"
     )
-    return _svg(340, 158, parts, "plot", title)
+    return svg(340, 158, parts, "plot", title)
 
 
 def dots(rows: Sequence[tuple[str, float]], title: str, unit: str) -> Markup:
@@ -234,7 +251,7 @@ def dots(rows: Sequence[tuple[str, float]], title: str, unit: str) -> Markup:
     for i, (_, value) in enumerate(rows):
         x = _ROW_LEFT + value / high * (_RIGHT - _ROW_LEFT)
         parts.append(f'<circle cx="{x:.1f}" cy="{30 + 13 * i}" r="2.6" class="reading"/>')
-    return _svg(340, base + 28, parts, "plot", title)
+    return svg(340, base + 28, parts, "plot", title)
 
 
 def differences(rows: Sequence[tuple[str, float, float]], title: str, unit: str) -> Markup:
@@ -255,28 +272,28 @@ def differences(rows: Sequence[tuple[str, float, float]], title: str, unit: str)
             f'<path d="M{x(value - half):.1f} {y}H{x(value + half):.1f}" class="bar reading"/>'
             f'<circle cx="{x(value):.1f}" cy="{y}" r="2.6" class="reading"/>'
         )
-    return _svg(340, base + 28, parts, "plot", title)
+    return svg(340, base + 28, parts, "plot", title)
 
 
 def _row_frame(
     names: Sequence[str], low: float, high: float, title: str, unit: str
 ) -> tuple[list[str], int]:
     """Title, row names, grid and scale of a plot with one row a name; and where its base is."""
-    parts = [_word(0, 11, title, "title")]
+    parts = [word(0, 11, title, "title")]
     base = 26 + 13 * len(names)
     ticks = _ticks(low, high, 5)
-    digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
+    digits = digits_of(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
     for tick in ticks:
         x = _ROW_LEFT + (tick - low) / (high - low) * (_RIGHT - _ROW_LEFT)
         parts.append(f'<path d="M{x:.1f} 20V{base}" class="faint"/>')
-        parts.append(_word(x, base + 12, number(tick, digits), "small", "middle"))
+        parts.append(word(x, base + 12, number(tick, digits), "small", "middle"))
     for i, name in enumerate(names):
         y = 30 + 13 * i
         shown = name if len(name) <= 16 else name[:15] + "…"
-        parts.append(_word(_ROW_LEFT - 6, y + 3, shown, "small", "end"))
+        parts.append(word(_ROW_LEFT - 6, y + 3, shown, "small", "end"))
         parts.append(f'<path d="M{_ROW_LEFT} {y}H{_RIGHT}" class="faint"/>')
     parts.append(f'<path d="M{_ROW_LEFT} {base}H{_RIGHT}" class="axis"/>')
-    parts.append(_word(_RIGHT, base + 24, unit, "small", "end"))
+    parts.append(word(_RIGHT, base + 24, unit, "small", "end"))
     return parts, base
 
 
@@ -297,7 +314,7 @@ def scatter(
     y_high = 1.1 * (float(ys.max()) if limit is None else max(limit, float(np.quantile(ys, 0.95))))
     y_high = y_high or 1.0
     left, top, base = 30.0, 22.0, 128.0
-    parts = [_word(0, 11, title, "title")]
+    parts = [word(0, 11, title, "title")]
 
     def x_px(x: float) -> float:
         return left + x / x_high * (_RIGHT - left)
@@ -306,85 +323,34 @@ def scatter(
         return base - min(y / y_high, 1.0) * (base - top)
 
     for tick in (ticks := _ticks(0.0, y_high, 4)):
-        digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
+        digits = digits_of(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
         parts.append(f'<path d="M{left} {y_px(tick):.1f}H{_RIGHT}" class="faint"/>')
-        parts.append(_word(left - 4, y_px(tick) + 3, number(tick, digits), "small", "end"))
+        parts.append(word(left - 4, y_px(tick) + 3, number(tick, digits), "small", "end"))
     for tick in (ticks := _ticks(0.0, x_high, 6)):
-        digits = _digits(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
-        parts.append(_word(x_px(tick), base + 12, number(tick, digits), "small", "middle"))
+        digits = digits_of(ticks[1] - ticks[0]) if len(ticks) > 1 else 1
+        parts.append(word(x_px(tick), base + 12, number(tick, digits), "small", "middle"))
     if limit is not None:
         parts.append(f'<path d="M{left} {y_px(limit):.1f}H{_RIGHT}" class="limit"/>')
     for verdict, x, y in points:
         parts.append(
-            f'<g transform="translate({x_px(x):.1f} {y_px(y):.1f}) scale(.75)">'
-            f"{_SIGNS[verdict]}</g>"
+            f'<g transform="translate({x_px(x):.1f} {y_px(y):.1f}) scale(.75)">{SIGNS[verdict]}</g>'
         )
     parts.append(f'<path d="M{left} {base}H{_RIGHT}" class="axis"/>')
     words = f"{y_unit} over {x_unit}, n = {len(points)}"
-    parts.append(_word(_RIGHT, base + 25, words, "small", "end"))
-    return _svg(340, 158, parts, "plot", title)
+    parts.append(word(_RIGHT, base + 25, words, "small", "end"))
+    return svg(340, 158, parts, "plot", title)
 
 
-def map_sketch(
-    objects: Sequence[tuple[str, str, float, float]],
-    stations: Sequence[tuple[float, float]],
-    sightlines: Sequence[tuple[float, float, float, float]],
-) -> Markup:
-    """The round seen from above, north up.
-
-    objects : (name, verdict, east m, north m); stations : (east, north);
-    sightlines : (east, north, east, north)
-    """
-    spots = np.array([o[2:] for o in objects] + list(stations), float).reshape(-1, 2)
-    if not len(spots):
-        return Markup("")
-    low, high = spots.min(axis=0), spots.max(axis=0)
-    span = float(max(*(high - low), 2.0))
-    wide, tall_most, edge = 680.0, 620.0, 34.0
-    scale = min((wide - 2 * edge) / span, (tall_most - 2 * edge) / max(high[1] - low[1], 1e-9))
-    tall = max(220.0, min(tall_most, (high[1] - low[1]) * scale + 2 * edge))
-    middle = (low + high) / 2.0
-
-    def at(east: float, north: float) -> tuple[float, float]:
-        return wide / 2 + (east - middle[0]) * scale, tall / 2 - (north - middle[1]) * scale
-
-    parts = [f'<rect width="{wide:.0f}" height="{tall:.0f}" class="frame"/>']
-    for x0, y0, x1, y1 in sightlines:
-        (ax, ay), (bx, by) = at(x0, y0), at(x1, y1)
-        parts.append(f'<path d="M{ax:.1f} {ay:.1f}L{bx:.1f} {by:.1f}" class="sight"/>')
-    for east, north in stations:
-        x, y = at(east, north)
-        parts.append(f'<path d="M{x:.1f} {y - 3.6:.1f}l3.4 6h-6.8Z" class="station"/>')
-    boxes: list[tuple[float, float, float, float]] = []
-    names: list[str] = []
-    for name, verdict, east, north in objects:
-        x, y = at(east, north)
-        parts.append(f'<g transform="translate({x:.1f} {y:.1f})">{_SIGNS[verdict]}</g>')
-        box = (x + 6, y - 6, x + 8 + 5.6 * len(name), y + 5)
-        free = all(box[0] > b[2] or box[2] < b[0] or box[1] > b[3] or box[3] < b[1] for b in boxes)
-        if free and len(names) < 120 and box[2] < wide:
-            boxes.append(box)
-            names.append(_word(x + 6, y + 3.5, name, "name"))
-    length = nice_step(span, 5)
-    x, y = edge, tall - 14
-    parts += names
-    parts.append(
-        f'<path d="M{x} {y - 4}v4h{length * scale:.1f}v-4" class="axis"/>'
-        f'<path d="M{wide - 26} {34}l-5 12h10ZM{wide - 26} 46v12" class="north"/>'
-    )
-    parts.append(_word(x + length * scale + 5, y, f"{number(length, _digits(length))} m", "small"))
-    parts.append(_word(wide - 26, 28, "N", "small", "middle"))
-    return _svg(wide, tall, parts, "sketch", "Sketch of the round from above, north up")
-
-
-def _word(x: float, y: float, words: str, kind: str, anchor: str = "start") -> str:
+def word(x: float, y: float, words: str, kind: str, anchor: str = "start") -> str:
+    """A word of a drawing, escaped."""
     return (
         f'<text x="{x:.1f}" y="{y:.1f}" text-anchor="{anchor}" class="{kind}">'
         f"{escape(words)}</text>"
     )
 
 
-def _svg(width: float, height: float, parts: Sequence[str], kind: str, title: str) -> Markup:
+def svg(width: float, height: float, parts: Sequence[str], kind: str, title: str) -> Markup:
+    """A whole drawing: its size, parts, class, and what it shows for those who cannot see it."""
     return Markup(
         f'<svg class="{kind}" viewBox="0 0 {width:.0f} {height:.0f}" role="img" '
         f'aria-label="{escape(title)}">{"".join(parts)}</svg>'

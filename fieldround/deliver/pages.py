@@ -34,7 +34,7 @@ def environment(package: str = "fieldround.deliver") -> jinja2.Environment:
         trim_blocks=True,
         lstrip_blocks=True,
     )
-    env.filters.update(number=number, metres=metres, data_address=data_address)
+    env.filters.update(number=number, metres=metres, interval=interval, data_address=data_address)
     env.globals.update(path=path, VERDICT_WORDS=VERDICT_WORDS)
     return env
 
@@ -57,6 +57,14 @@ def number(value: float | None, digits: int = 2, missing: str = "–") -> str:
     if value is None or not math.isfinite(value):
         return missing
     return f"{round(value, digits) + 0.0:.{digits}f}".replace("-", "−")
+
+
+def interval(low: float | None, high: float | None, digits: int = 3) -> str:
+    """Both ends of an interval in metres; an end that was not found is open."""
+    if low is None and high is None:
+        return "–"
+    ends = ("open" if end is None else number(end, digits) for end in (low, high))
+    return " … ".join(ends)
 
 
 def metres(value: float | None, digits: int = 3) -> str:

@@ -22,6 +22,7 @@ from fieldround.deliver.layers import VIEWS, Layer
 from fieldround.deliver.pages import environment, part
 from fieldround.deliver.places import place_of, station_of
 from fieldround.deliver.shapes import degrees_per_metre
+from fieldround.deliver.sketch import map_sketch
 from fieldround.deliver.times import local_dates
 from fieldround.place.frames import PlacedPoint
 from fieldround.rounds.model import KINDS, Camera
@@ -260,7 +261,7 @@ def _sketch(result: RoundResult, layers: Mapping[str, Layer]) -> Markup:
     objects = [
         (f.object, f.verdict, *places[f.object]) for f in result.objects if f.object in places
     ]
-    return figures.map_sketch(objects, list(spots.values()), lines[:4000])
+    return map_sketch(objects, list(spots.values()), lines[:4000])
 
 
 def _held(crops: CropsByView, carded: set[str]) -> int:

@@ -8,8 +8,9 @@ import pytest
 from fieldround.deliver import figures, report
 from fieldround.deliver.crops import cut_crops
 from fieldround.deliver.layers import layers_of
-from fieldround.deliver.pages import metres, number
+from fieldround.deliver.pages import interval, metres, number
 from fieldround.deliver.report import report_html
+from fieldround.deliver.sketch import map_sketch
 from fieldround.solve.results import BUDGET_SOURCES
 from tests.deliver import invented
 
@@ -137,8 +138,20 @@ def test_readings_scale_places_every_value_between_its_ends():
     assert all(58 <= v <= 320 for v in (a, b, d))
 
 
+def test_an_open_end_is_an_arrow_and_a_word(tmp_path):
+    shut = str(figures.readings_scale([("A", 0.3, 0.01)], 0.3, 0.28, 0.32))
+    ajar = str(figures.readings_scale([("A", 0.3, 0.01)], 0.3, 0.28, None))
+    assert "l-5 4" in ajar
+    assert "l-5 4" not in shut
+    assert interval(0.28, None) == "0.280 … open"
+    assert interval(None, None) == "–"
+    result = invented.large_round(1)
+    found = replace(result.objects[0], diameter_hi_m=None)
+    assert "… open m" in made(replace(result, objects=(found,)), tmp_path)
+
+
 def test_names_in_drawings_are_escaped():
-    drawn = figures.map_sketch([("<b>", "accept", 0.0, 0.0)], [(1.0, 1.0)], [(1.0, 1.0, 0.0, 0.0)])
+    drawn = map_sketch([("<b>", "accept", 0.0, 0.0)], [(1.0, 1.0)], [(1.0, 1.0, 0.0, 0.0)])
     assert "&lt;b&gt;" in drawn
     assert "<b>" not in drawn
     assert "<b>" not in figures.dots([("<b>", 0.3)], "<b>", "px")

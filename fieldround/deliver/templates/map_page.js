@@ -170,9 +170,8 @@ function showRound(map, groups, background) {
     box.append(head, text("p", [row.kind, row.label].filter(Boolean).join(" · "), "sub"));
     if (row.diameter_m !== null) {
       var big = text("p", row.diameter_m.toFixed(3) + " m", "big");
-      if (row.diameter_lo_m !== null && row.diameter_hi_m !== null) {
-        big.append(text("small", "95 %: " + row.diameter_lo_m.toFixed(3) + " … " +
-          row.diameter_hi_m.toFixed(3) + " m"));
+      if (row.diameter_lo_m !== null || row.diameter_hi_m !== null) {
+        big.append(text("small", "95 %: " + end(row.diameter_lo_m) + " … " + end(row.diameter_hi_m)));
       }
       box.append(big);
     }
@@ -237,6 +236,7 @@ function showRound(map, groups, background) {
   function words(verdict) {
     return verdict === "remeasure" ? "measure again" : verdict;
   }
+  function end(value) { return value === null ? "open" : value.toFixed(3) + " m"; }
   function metres(value, digits) { return value === null ? "" : value.toFixed(digits) + " m"; }
   function plusMinus(value, sd, digits, unit) {
     if (value === null) { return ""; }
