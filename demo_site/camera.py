@@ -7,10 +7,10 @@ the upright picture for any point, and the part of the picture a piece of the sc
 from __future__ import annotations
 
 import numpy as np
-from fieldround.geometry.camera import distort, from_card, pixels_to_ideal, project
-from fieldround.geometry.rotations import square_basis
 
 from demo_site.scene import Ball, Panel, Piece, View
+from fieldround.geometry.camera import distort, from_card, pixels_to_ideal, project
+from fieldround.geometry.rotations import square_basis
 
 NEAR_M = 0.05
 

@@ -9,12 +9,12 @@ from __future__ import annotations
 from collections.abc import Iterable
 
 import numpy as np
-from fieldround.geometry.solids import limb_points, outline_rays
 
 from demo_site.camera import seen_at
 from demo_site.inventory import Thing
 from demo_site.scene import Ball, Cone, Scene, View
 from demo_site.tracing import distance_to
+from fieldround.geometry.solids import limb_points, outline_rays
 
 # WGS 84, NIMA TR8350.2.
 EQUATOR_M, FLATTENING = 6_378_137.0, 1.0 / 298.257223563
