@@ -86,13 +86,13 @@ def fit_fixes(
             cov[np.diag_indices(count)] += (calm - 1.0) * variance
             fit = _fit(fixes_m, stations_m, cov)
             at = fit.turn_deg if heading_deg is None else heading_deg
-    from scipy.stats import chi2
+    from scipy.special import chdtri
 
     rest = _residuals(fit, at)
     freedom = 2 * (count - 1)
     square = float(np.einsum("ik,ij,jk->", rest, np.linalg.inv(cov), rest))
     misfit = float(np.sqrt((rest**2).sum(axis=1).mean()))
-    if square <= chi2.ppf(1.0 - _DOUBT, freedom):
+    if square <= chdtri(freedom, _DOUBT):
         return _fit(fixes_m, stations_m, cov, misfit)
     factor = float(np.sqrt(square / freedom))
     return _fit(fixes_m, stations_m, cov * factor**2, misfit, factor)

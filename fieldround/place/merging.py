@@ -50,12 +50,12 @@ def merge_spots(
     off = places - at
     square = float(np.einsum("ki,kij,kj->", off, inverses, off))
     freedom = 2 * (len(spots) - 1)
-    up = float(np.mean([spot.up_m for spot in spots[:1]]))
+    up = spots[0].up_m
 
-    from scipy.stats import chi2
+    from scipy.special import chdtri
 
     slope = np.zeros(2)
-    if square <= chi2.ppf(1.0 - _DOUBT, freedom):
+    if square <= chdtri(freedom, _DOUBT):
         return Spot(at, cov, up, slope), None
     apart = float(np.linalg.norm(places[:, None] - places[None, :], axis=-1).max())
     names = ", ".join(pair.pair for pair in pairs)
