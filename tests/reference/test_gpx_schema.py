@@ -22,7 +22,8 @@ POINT = """<trkpt lat="{lat}" lon="{lon}">
 <pdop>2.5</pdop><ageofdgpsdata>1.0</ageofdgpsdata><dgpsid>12</dgpsid>
 <extensions><x:own xmlns:x="urn:x">1</x:own></extensions></trkpt>"""
 ORDER = ["ele", "time", "magvar", "geoidheight", "name", "cmt", "desc", "src", "link", "sym",
-         "type", "fix", "sat", "hdop", "vdop", "pdop", "ageofdgpsdata", "dgpsid", "extensions"]  # fmt: skip
+         "type", "fix", "sat", "hdop", "vdop", "pdop", "ageofdgpsdata", "dgpsid",
+         "extensions"]  # fmt: skip
 
 
 def document(points: list[str], namespace: str = "http://www.topografix.com/GPX/1/1") -> str:
