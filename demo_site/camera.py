@@ -8,9 +8,8 @@ from __future__ import annotations
 
 import numpy as np
 
-from demo_site.scene import Ball, Panel, Piece, View
+from demo_site.scene import Panel, Piece, View, corners
 from fieldround.geometry.camera import distort, from_card, pixels_to_ideal, project
-from fieldround.geometry.rotations import square_basis
 
 NEAR_M = 0.05
 
@@ -27,23 +26,6 @@ def seen_at(view: View, points: np.ndarray) -> np.ndarray:
     local = (np.asarray(points) - view.station) @ view.rotation.T
     stored = project(local, np.array(view.lens.values))
     return from_card(stored, view.turn_deg, view.upright_px)
-
-
-def corners(piece: Piece) -> np.ndarray:
-    """Points whose hull holds the piece, (n, 3)."""
-    if isinstance(piece, Ball):
-        signs = np.array(np.meshgrid([-1, 1], [-1, 1], [-1, 1])).reshape(3, -1).T
-        return np.array(piece.centre) + piece.radius_m * signs
-    if isinstance(piece, Panel):
-        a, b = np.array(piece.across) * piece.width_m, np.array(piece.up) * piece.height_m
-        return np.array(piece.origin) + np.array([0 * a, a, a + b, b])
-    turn = np.linspace(0.0, 2.0 * np.pi, 12, endpoint=False)
-    ring = (square_basis(np.array(piece.axis)) @ np.stack([np.cos(turn), np.sin(turn)])).T
-    ends = []
-    for along in (0.0, piece.length_m):
-        radius = 1.04 * (piece.radius_m + piece.taper_m_per_m * along)
-        ends.append(np.array(piece.base) + along * np.array(piece.axis) + radius * ring)
-    return np.concatenate(ends)
 
 
 def window(

@@ -69,7 +69,7 @@ def _bar(
     return Thing(name, kind, label, solid, ref, **more)
 
 
-_ZINC, _GREEN, _IRON = (0.62, 0.65, 0.66), (0.22, 0.36, 0.30), (0.16, 0.17, 0.18)
+_ZINC, _GREEN, _IRON = (0.62, 0.65, 0.66), (0.25, 0.41, 0.34), (0.16, 0.17, 0.18)
 _WHITE = (0.90, 0.89, 0.84)
 
 
@@ -129,7 +129,7 @@ def things() -> list[Thing]:
               Ball((3.51, 20.31, 2.30), 0.318, "stone", look={"seed": 7}, object="O1"),
               note="stands on the pier of the mill garden"),
         Thing("G1", "ball", "gauge ball",
-              Ball((-14.15, -1.65, 0.45 + 0.15), 0.150, "painted",
+              Ball((-13.9, -2.7, 0.45 + 0.15), 0.150, "painted",
                    look={"seed": 10, "paint": (0.90, 0.52, 0.14), "gloss": 0.3}, object="G1"),
               known_diameter_m=0.300, note="set on a crate for scale"),
     ]  # fmt: skip
@@ -178,7 +178,7 @@ def fittings() -> list[Piece]:
     for number, name in enumerate(("T1", "T2", "T3", "T4", "T5")):
         solid = all_things[name].solid
         top = np.array(solid.base) + (solid.length_m + 0.9) * np.array(solid.axis)
-        found += crown(tuple(top), 2.9, 12, 900 + 31 * number)
+        found += crown(tuple(top), 2.9, 20, 900 + 31 * number)
         for turn in (20.0, 140.0, 260.0):
             low = np.array(solid.base) + 0.78 * solid.length_m * np.array(solid.axis)
             found.append(Cone(tuple(low), leaning_axis(42.0, turn + 31 * number), 0.09, 2.0, "bark",
@@ -190,7 +190,7 @@ def fittings() -> list[Piece]:
             "stone",
             look={"seed": 15, "paint": (0.55, 0.54, 0.52)},
         )
-    found += box((-14.45, -1.93, 0.0), (0.56, 0.56, 0.45), "planks", 4.0,
+    found += box((-14.2, -2.98, 0.0), (0.56, 0.56, 0.45), "planks", 4.0,
                  look={"seed": 33, "board_m": 0.09, "paint": (0.56, 0.45, 0.31)})  # fmt: skip
     found.append(
         Cone(

@@ -7,7 +7,7 @@ EXIF and the pictures are made from.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 from demo_site.inventory import Thing, quillwater, things
 from demo_site.scene import Lens, Scene, View
@@ -38,6 +38,7 @@ class Walked:
 
     objects : names marked in it; plumb : (name, bottom point, top point) of true verticals
     limbs   : limb points a side
+    scene   : where it was taken, None for the outing's one place
     """
 
     pair: str
@@ -49,6 +50,7 @@ class Walked:
     note: str = ""
     limbs: int = 6
     plumb: tuple[tuple[str, tuple[float, float, float], tuple[float, float, float]], ...] = ()
+    scene: Scene | None = None
 
 
 @dataclass(frozen=True)
@@ -65,9 +67,13 @@ class Outing:
     place: str
     checks: tuple[tuple[str, float, str], ...] = ()
     tape_sd_m: float = 0.003
-    words: dict[str, str] = field(default_factory=dict)
+
+    def scene_of(self, pair: Walked) -> Scene:
+        """The place a pair's photos show."""
+        return pair.scene or self.scene
 
     def thing(self, name: str) -> Thing:
+        """An object of the inventory by its name."""
         return next(t for t in self.things if t.object == name)
 
 
@@ -108,60 +114,60 @@ def quillwater_round() -> Outing:
         Walked("01-towpath", CAMERA_WIDE,
                _views("01-towpath", CAMERA_WIDE, ((-3.1, -6.1, 1.62), (-3.5, -4.3, 1.58)),
                       ((6.5, -2.6, 2.15), (6.5, -2.9, 2.1)), (0.7, -0.5)),
-               ("K1", "K2"), "2026:04:21 14:06:11", note="across the cobbles"),
+               ("K1", "K2"), "2026:06:18 14:06:11", note="across the cobbles"),
         Walked("02-bollards", POCKET,
                _views("02-bollards", POCKET, ((-0.3, -2.75, 1.55), (0.75, -3.2, 1.60)),
                       ((2.9, -0.7, 0.62), (2.95, -0.72, 0.66)), (-0.8, 0.9)),
-               ("B1", "B2"), "2026:04:21 14:12:40", note="from the towpath"),
+               ("B1", "B2"), "2026:06:18 14:12:40", note="from the towpath"),
         Walked("03-far-bank", CAMERA_WIDE,
                _views("03-far-bank", CAMERA_WIDE, ((-7.6, -1.3, 1.60), (-4.4, -1.2, 1.66)),
                       ((-6.4, 15.0, 1.9), (-6.0, 15.0, 1.9)), (0.4, 0.9)),
-               ("T1", "T2", "T3"), "2026:04:21 14:18:02",
+               ("T1", "T2", "T3"), "2026:06:18 14:18:02",
                note="trunks stand across the water, no girth tape possible"),
         Walked("04-lamps", POCKET,
                _views("04-lamps", POCKET, ((-3.4, -6.9, 1.63), (-3.7, -4.9, 1.66)),
                       ((-12.5, -6.0, 2.1), (-12.5, -6.0, 2.05)), (-0.6, 0.3), portrait=True),
-               ("M1", "M2"), "2026:04:21 14:23:37", limbs=7),
+               ("M1", "M2"), "2026:06:18 14:23:37", limbs=7),
         Walked("05-gauge", CAMERA_WIDE,
                _views("05-gauge", CAMERA_WIDE, ((-10.4, -3.0, 1.50), (-10.9, -4.2, 1.46)),
-                      ((-14.6, -1.3, 0.75), (-14.6, -1.35, 0.72)), (0.5, -0.9), portrait=True),
-               ("G1", "B3"), "2026:04:21 14:30:15", tape=False,
+                      ((-14.7, -1.7, 0.72), (-14.7, -1.7, 0.70)), (0.5, -0.9), portrait=True),
+               ("G1", "B3"), "2026:06:18 14:30:15", tape=False,
                note="no tape at hand, gauge ball of 300 mm set out"),
         Walked("06-leaning", CAMERA_WIDE,
                _views("06-leaning", CAMERA_WIDE, ((13.6, -7.2, 1.60), (13.1, -5.2, 1.64)),
                       ((24.5, -3.7, 2.6), (24.5, -3.9, 2.55)), (0.8, -0.6)),
-               ("L1", "K3"), "2026:04:21 14:36:50", note="pole 3 leans towards the water",
+               ("L1", "K3"), "2026:06:18 14:36:50", note="pole 3 leans towards the water",
                plumb=(("corner of no. 21", (29.6, -9.7, 0.6), (29.6, -9.7, 4.6)),
                       ("corner of no. 32", (32.4, -9.7, 0.6), (32.4, -9.7, 4.6)))),
         Walked("07-main", CAMERA_WIDE,
                _views("07-main", CAMERA_WIDE, ((38.6, -2.6, 1.56), (42.3, -4.1, 1.62)),
-                      ((45.5, 4.0, 2.9), (45.6, 4.0, 3.0)), (-0.4, 0.7)),
-               ("P1",), "2026:04:21 14:44:29", note="insulated pipe, outside of the sheet"),
+                      ((45.2, 5.0, 2.7), (45.5, 4.0, 2.9)), (-0.4, 0.7)),
+               ("P1", "M3"), "2026:06:18 14:44:29", note="insulated pipe, outside of the sheet"),
         Walked("08-gate", POCKET,
                _views("08-gate", POCKET, ((0.3, 12.6, 1.58), (2.3, 11.9, 1.61)),
                       ((3.9, 20.3, 2.0), (3.9, 20.3, 2.0)), (0.6, -0.5)),
-               ("O1",), "2026:04:21 14:53:08", note="over the road bridge to the far bank"),
+               ("O1",), "2026:06:18 14:53:08", note="over the road bridge to the far bank"),
         Walked("09-west-bank", POCKET,
                _views("09-west-bank", POCKET,
                       ((-18.9, -1.5, 1.61), (-15.7, -1.3, 1.64), (-12.2, -1.4, 1.58)),
                       ((-16.6, 14.6, 2.0), (-16.3, 14.6, 2.0), (-16.0, 14.6, 2.05)),
                       (0.5, -0.7, 0.2)),
-               ("T4", "M4"), "2026:04:21 15:02:44", note="three stations", limbs=7),
+               ("T4", "M4"), "2026:06:18 15:02:44", note="three stations", limbs=7),
         Walked("10-tank", CAMERA_WIDE,
                _views("10-tank", CAMERA_WIDE, ((-0.6, -1.2, 1.63), (5.6, -1.1, 1.60)),
                       ((26.0, 50.0, 3.0), (27.0, 50.0, 3.0)), (-0.3, 0.5)),
-               ("S1",), "2026:04:21 15:09:12", note="long sight over the water", limbs=7),
+               ("S1",), "2026:06:18 15:09:12", note="long sight over the water", limbs=7),
         Walked("11-east-light", CAMERA_LONG,
                _views("11-east-light", CAMERA_LONG, ((3.6, -5.9, 1.64), (5.4, -1.3, 1.60)),
                       ((42.0, 13.4, 3.1), (41.8, 13.4, 3.1)), (0.2, -0.3), portrait=True),
-               ("M3", "T5"), "2026:04:21 15:14:55", note="zoomed in", limbs=7),
+               ("M3", "T5"), "2026:06:18 15:14:55", note="zoomed in", limbs=7),
         Walked("12-pole-6", CAMERA_WIDE,
-               _views("12-pole-6", CAMERA_WIDE, ((-14.8, -4.2, 1.60), (-16.3, -4.10, 1.64)),
+               _views("12-pole-6", CAMERA_WIDE, ((-19.0, -4.7, 1.60), (-20.5, -4.58, 1.64)),
                       ((-31.0, -3.0, 2.0), (-31.0, -3.0, 2.0)), (0.3, 0.4)),
-               ("K4",), "2026:04:21 15:21:30", note="stepped forward in a hurry"),
+               ("K4",), "2026:06:18 15:21:30", note="stepped forward in a hurry"),
     )  # fmt: skip
     return Outing(
-        quillwater(), tuple(things()), pairs, SITE, 20260421,
+        quillwater(), tuple(things()), pairs, SITE, 20260618,
         "Quillwater, round objects of the canal side", "crew 2", "Quillwater (made up)",
         checks=(("K1", 0.0025, "girth tape"), ("B1", 0.002, "caliper"), ("M1", 0.002, "caliper"),
                 ("L1", 0.0025, "girth tape"), ("O1", 0.003, "girth tape")),

@@ -13,9 +13,11 @@ from demo_site.scene import Ball, Panel, Scene, View
 from demo_site.shading import Sight
 
 ROWS, COLUMNS = 64, 96
-_TWO, _FOUR = np.array([-0.25, 0.25]), np.array([-0.375, -0.125, 0.125, 0.375])
-FOUR = np.array([(x, y) for x in _TWO for y in _TWO])
-SIXTEEN = np.array([(x, y) for x in _FOUR for y in _FOUR])
+# No two sight lines of a pixel share a row or a column, so that an edge of any direction is
+# placed to a sixteenth of a pixel (bit-reversed order, J. G. van der Corput, 1935).
+FOUR = np.array([(k, (0, 2, 1, 3)[k]) for k in range(4)]) / 4 - 0.375
+_REVERSED = (0, 8, 4, 12, 2, 10, 6, 14, 1, 9, 5, 13, 3, 11, 7, 15)
+SIXTEEN = (np.array([(k, _REVERSED[k]) for k in range(16)]) + 0.5) / 16 - 0.5
 
 
 def render_view(scene: Scene, view: View, coarse: bool = False) -> np.ndarray:

@@ -14,6 +14,8 @@ from typing import Any
 
 import numpy as np
 
+from fieldround.geometry.rotations import square_basis
+
 _PLAIN: Mapping[str, Any] = MappingProxyType({})
 
 
@@ -73,14 +75,39 @@ class Panel:
 Piece = Cone | Ball | Panel
 
 
+def corners(piece: Piece) -> np.ndarray:
+    """Points whose hull holds the piece, (n, 3)."""
+    if isinstance(piece, Ball):
+        signs = np.array(np.meshgrid([-1, 1], [-1, 1], [-1, 1])).reshape(3, -1).T
+        return np.array(piece.centre) + piece.radius_m * signs
+    if isinstance(piece, Panel):
+        a, b = np.array(piece.across) * piece.width_m, np.array(piece.up) * piece.height_m
+        return np.array(piece.origin) + np.array([0 * a, a, a + b, b])
+    turn = np.linspace(0.0, 2.0 * np.pi, 12, endpoint=False)
+    ring = (square_basis(np.array(piece.axis)) @ np.stack([np.cos(turn), np.sin(turn)])).T
+    ends = []
+    for along in (0.0, piece.length_m):
+        radius = 1.04 * (piece.radius_m + piece.taper_m_per_m * along)
+        ends.append(np.array(piece.base) + along * np.array(piece.axis) + radius * ring)
+    return np.concatenate(ends)
+
+
 @dataclass(frozen=True)
 class Scene:
     """A place: its pieces, where the sun stands (degrees) and its grain's number."""
 
     pieces: tuple[Piece, ...]
-    sun_azimuth_deg: float = 212.0
-    sun_height_deg: float = 43.0
+    sun_azimuth_deg: float = 215.0
+    sun_height_deg: float = 55.0
     seed: int = 1
+
+    @cached_property
+    def bounds(self) -> tuple[np.ndarray, np.ndarray]:
+        """Centres (n, 3) and radii (n,) of balls around the pieces."""
+        spots = [corners(piece) for piece in self.pieces]
+        centres = np.array([0.5 * (s.min(axis=0) + s.max(axis=0)) for s in spots])
+        gaps = zip(spots, centres, strict=True)
+        return centres, np.array([np.linalg.norm(s - c, axis=1).max() for s, c in gaps])
 
     @property
     def sun(self) -> np.ndarray:
@@ -237,12 +264,13 @@ def crown(
     rng = np.random.default_rng(seed)
     found = []
     for number in range(count):
-        away = rng.normal(size=3) * (0.42, 0.42, 0.3) * size_m
-        if number == 0:
-            away[:] = 0.0
-        radius = size_m * rng.uniform(0.32, 0.52)
+        away = rng.normal(size=3)
+        away *= size_m * rng.uniform(0.42, 0.82) * np.array([1.0, 1.0, 0.72]) / np.linalg.norm(away)
+        radius = size_m * rng.uniform(0.20, 0.42)
+        if number < 2:
+            away, radius = 0.25 * away, size_m * 0.55
         place = np.add(centre, away)
-        look = {"seed": seed + number, "tint": float(rng.uniform())}
+        look = {"seed": seed + number, "tint": float(rng.uniform(0.1, 0.9))}
         found.append(Ball(_t(place), float(radius), "leaves", gaps, look))
     return found
 

@@ -9,16 +9,16 @@ from __future__ import annotations
 import numpy as np
 
 from demo_site import walls
-from demo_site.camera import corners, sight_lines, window
+from demo_site.camera import sight_lines, window
 from demo_site.noise import waves
-from demo_site.scene import Ball, Panel, Scene, View
+from demo_site.scene import Ball, Panel, Scene, View, corners
 from demo_site.textures import Spot
 from demo_site.tracing import Shade, distance_to, surface
 
 AIR = np.array([0.72, 0.79, 0.86], dtype=np.float32)
-SUNLIGHT = np.array([0.92, 0.86, 0.73], dtype=np.float32)
-SKYLIGHT = np.array([0.42, 0.47, 0.54], dtype=np.float32)
-BOUNCE = np.array([0.13, 0.12, 0.09], dtype=np.float32)
+SUNLIGHT = np.array([1.02, 0.95, 0.80], dtype=np.float32)
+SKYLIGHT = np.array([0.55, 0.60, 0.67], dtype=np.float32)
+BOUNCE = np.array([0.22, 0.20, 0.15], dtype=np.float32)
 MIRROR_SPARE_PX = 70
 
 Tile = tuple[int, int, int, int]
@@ -189,7 +189,7 @@ def sky(towards: np.ndarray) -> np.ndarray:
     spread = 1.0 / (rise + 0.12)
     px = np.full(len(rise), 0.004, dtype=np.float32)
     grain = waves((towards[:, 0] * spread, towards[:, 1] * spread), px, 601, 1.7, 0.02, 0.62)
-    cloud = np.clip(1.5 * grain + 0.15, 0, 1).astype(np.float32)
+    cloud = np.clip(1.5 * grain + 0.32, 0, 1).astype(np.float32)
     cloud = (cloud * cloud * (3 - 2 * cloud))[:, None]
     shaded = np.clip(0.97 - 0.13 * np.clip(grain - 0.3, 0, 1), 0, 1).astype(np.float32)[:, None]
     return tone * (1 - 0.85 * cloud) + 0.85 * cloud * shaded

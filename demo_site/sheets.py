@@ -15,7 +15,7 @@ import numpy as np
 from demo_site.camera import seen_at
 from demo_site.inventory import Thing
 from demo_site.outing import Body, Outing, Walked
-from demo_site.scene import Ball, Cone, View
+from demo_site.scene import Ball, Cone, Scene, View
 from demo_site.truth import (
     chosen,
     geodetic,
@@ -103,9 +103,9 @@ def exact_marks(
     for name in pair.objects:
         thing = outing.thing(name)
         if isinstance(thing.solid, Ball):
-            found += _ball_marks(outing, view, thing)
+            found += _ball_marks(outing.scene_of(pair), view, thing)
         else:
-            found += _bar_marks(outing, pair, view, thing)
+            found += _bar_marks(outing.scene_of(pair), pair.limbs, view, thing)
     for name, low, high in pair.plumb:
         spots = seen_at(view, np.linspace(low, high, 3))
         if inside(view, spots).all():
@@ -113,15 +113,15 @@ def exact_marks(
     return found
 
 
-def _ball_marks(
-    outing: Outing, view: View, thing: Thing
-) -> list[tuple[str, str, np.ndarray, float]]:
+def _ball_marks(scene: Scene, view: View, thing: Thing) -> list[tuple[str, str, np.ndarray, float]]:
     ball = thing.solid
     assert isinstance(ball, Ball)
     many = outline_pixels(view, ball, 60)
     rays = np.array([np.array(view.station) + r for r in _outline_space(view, ball, 60)])
-    good = inside(view, many) & unhidden(outing.scene, view, thing, rays)
+    good = inside(view, many) & unhidden(scene, view, thing, rays)
     places = many[good]
+    if len(places) < OUTLINE_POINTS:
+        return []
     at = np.linspace(0, len(places) - 1, OUTLINE_POINTS + 1)[:-1].astype(int)
     return [(thing.object, "outline", spot, LIMB_SD_PX) for spot in places[at]]
 
@@ -137,13 +137,13 @@ def _outline_space(view: View, ball: Ball, count: int) -> np.ndarray:
 
 
 def _bar_marks(
-    outing: Outing, pair: Walked, view: View, thing: Thing
+    scene: Scene, limbs: int, view: View, thing: Thing
 ) -> list[tuple[str, str, np.ndarray, float]]:
     solid = thing.solid
     assert isinstance(solid, Cone)
     found: list[tuple[str, str, np.ndarray, float]] = []
-    for side, heights in sorted(visible_heights(outing.scene, view, thing).items()):
-        at = chosen(heights, pair.limbs)
+    for side, heights in sorted(visible_heights(scene, view, thing).items()):
+        at = chosen(heights, limbs)
         if len(at) < 2:
             continue
         spots = limb_pixels(view, thing, at)[0 if side == "left" else 1]
@@ -153,9 +153,10 @@ def _bar_marks(
         ends.append(("top", solid.length_m))
     for mark, height in ends:
         spot = seen_at(view, np.array([np.array(solid.base) + height * np.array(solid.axis)]))
-        level = np.array([height if mark == "base" else height - 0.01])
+        # A little off the end: the rim of a leaning foot dips into the ground.
+        level = np.array([0.07 if mark == "base" else height - 0.01])
         rims = np.concatenate([limb_space(view, solid, level, side) for side in (1.0, -1.0)])
-        if inside(view, spot)[0] and unhidden(outing.scene, view, thing, rims).all():
+        if inside(view, spot)[0] and unhidden(scene, view, thing, rims).all():
             found.append((thing.object, mark, spot[0], END_SD_PX))
     return found
 
@@ -177,7 +178,7 @@ def checks_csv(outing: Outing) -> str:
         thing = outing.thing(name)
         read = thing.diameter_m + _draw(outing, "check", name).normal(0, sd)
         height = "" if thing.ref_height_m is None else thing.ref_height_m
-        rows.append([name, f"{read:.4f}", sd, method, height, "2026-04-22", outing.crew])
+        rows.append([name, f"{read:.4f}", sd, method, height, "2026-06-19", outing.crew])
     return _csv("object diameter_m sd_m method height_m measured_on by", rows)
 
 
@@ -225,7 +226,7 @@ def truth_csv(outing: Outing) -> str:
             ]  # fmt: skip
         rows.append([
             thing.object, thing.kind, " ".join(p.pair for p in pairs), f"{thing.diameter_m:.5f}",
-            ref, *shape, f"{longitude:.8f}", f"{latitude:.8f}", f"{away:.2f}",
+            ref, *shape, f"{longitude:.10f}", f"{latitude:.10f}", f"{away:.2f}",
         ])  # fmt: skip
     return _csv(
         "object kind pair diameter_m ref_height_m height_m lean_deg lean_to_deg taper_mm_per_m "
@@ -246,7 +247,7 @@ def truth_views_csv(outing: Outing) -> str:
             longitude, latitude, _ = geodetic(outing.site, np.array(view.station))[0]
             rows.append([
                 pair.pair, view.photo, *view.upright_px, view.turn_deg, *view.station,
-                f"{longitude:.8f}", f"{latitude:.8f}", f"{view.heading_deg:.4f}",
+                f"{longitude:.10f}", f"{latitude:.10f}", f"{view.heading_deg:.4f}",
                 *(f"{v:.12f}" for v in view.rotation.ravel()), *view.lens.values,
             ])  # fmt: skip
     return _csv(header, rows)

@@ -42,18 +42,30 @@ def tinted(base: np.ndarray, grain: np.ndarray, strength: float) -> np.ndarray:
 def grass(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
     x, y = s.points[:, 0], s.points[:, 1]
     patch = waves((x, y), s.px_m, 11, 6.0, 0.8, 0.8)
-    blades = waves((x, y), s.px_m, 31, 0.7, 0.003, 0.95)
-    base = blend(
-        colour(0.27, 0.37, 0.14), colour(0.44, 0.46, 0.22), np.clip(0.4 + 0.45 * patch, 0, 1)
-    )
-    out = tinted(base, blades, 0.30)
-    first, _, own = cells(x / 0.45, y / 0.45, 51)
-    flower = (own > 0.72) * edge(0.055 - 0.45 * first, s.px_m)
-    petal = np.where((own > 0.86)[:, None], colour(0.95, 0.93, 0.88), colour(0.93, 0.80, 0.16))
-    out = blend(out, petal, flower)
+    tufts = waves((x, y), s.px_m, 31, 0.5, 0.02, 0.9)
+    # Blades: noise drawn out along four directions, each where its own patches say.
+    blades = np.zeros(len(x), dtype=np.float32)
+    for turn in range(4):
+        c, n = np.cos(0.8 * turn + 0.3), np.sin(0.8 * turn + 0.3)
+        along, across = (c * x + n * y) / 7.0, c * y - n * x
+        share = np.clip(0.5 + 1.6 * waves((x, y), s.px_m, 401 + turn, 0.12, 0.05, 0.5), 0, 1)
+        blades += share * waves((along, across), s.px_m, 37 + 7 * turn, 0.012, 0.003, 0.9)
+    share = np.clip(0.45 + 0.30 * patch + 0.16 * tufts, 0, 1)
+    base = blend(colour(0.26, 0.33, 0.15), colour(0.46, 0.48, 0.26), share)
+    clump = waves((x, y), s.px_m, 35, 0.16, 0.01, 0.95)
+    grain = 0.12 * tufts + 0.20 * clump + 0.34 * blades
+    out = tinted(base, grain, 1.0)
+    for size, seed, white in ((0.17, 51, 0.5), (0.31, 56, 0.8)):
+        first, _, own = cells(x / size, y / size, seed)
+        flower = (own > 0.80) * edge(0.016 + 0.012 * own - size * first, s.px_m)
+        flower *= np.clip(0.03 / s.px_m, 0.25, 1.0)
+        petal = np.where(
+            (own > 1 - 0.2 * white)[:, None], colour(0.96, 0.95, 0.90), colour(0.95, 0.82, 0.16)
+        )
+        out = blend(out, petal, flower.astype(np.float32))
     first, _, own = cells(x / 1.7 + 5, y / 1.7, 61)
-    worn = (own > 0.6) * np.clip(1.4 - 2.6 * first, 0, 1) * 0.7
-    return blend(out, tinted(colour(0.46, 0.40, 0.29), blades, 0.28), worn.astype(np.float32))
+    worn = (own > 0.6) * np.clip(1.4 - 2.6 * first + 0.3 * tufts, 0, 1) * 0.7
+    return blend(out, tinted(colour(0.50, 0.43, 0.31), grain, 0.9), worn.astype(np.float32))
 
 
 def paving(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
@@ -77,9 +89,9 @@ def paving(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
 
 def cobbles(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
     x, y = s.points[:, 0], s.points[:, 1]
-    first, second, own = cells(x / 0.15, y / 0.13, 91)
+    first, second, own = cells(x / 0.12, y / 0.105, 91)
     grain = waves((x, y), s.px_m, 95, 0.9, 0.002, 0.9)
-    base = blend(colour(0.33, 0.33, 0.36), colour(0.58, 0.53, 0.47), own)
+    base = blend(colour(0.37, 0.35, 0.34), colour(0.63, 0.57, 0.49), own)
     dome = np.clip((second - first) * 2.2, 0, 1)
     fade = np.clip(0.10 / s.px_m, 0, 1).astype(np.float32)
     return tinted(base, grain, 0.17) * (1 - fade * (1 - (0.42 + 0.62 * dome)))[:, None]
@@ -87,12 +99,26 @@ def cobbles(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
 
 def gravel(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
     x, y = s.points[:, 0], s.points[:, 1]
-    first, second, own = cells(x / 0.035, y / 0.035, 101)
-    fade = np.clip(0.02 / s.px_m, 0, 1).astype(np.float32)
     grain = waves((x, y), s.px_m, 105, 1.3, 0.003, 0.93)
-    base = blend(colour(0.44, 0.40, 0.33), colour(0.66, 0.61, 0.53), own * fade + 0.5 * (1 - fade))
-    dent = 1 - fade * 0.45 * (1 - np.clip((second - first) * 2.5, 0, 1))
-    return tinted(base, grain, 0.18) * dent[:, None]
+    out = tinted(colour(0.50, 0.46, 0.38), grain, 0.14)
+    # Fine stones first, then fewer larger ones that lie on them.
+    for size, seed, least, round_ in (
+        (0.016, 101, 0.0, 0.62),
+        (0.034, 104, 0.45, 0.42),
+        (0.07, 108, 0.8, 0.33),
+    ):
+        if size < 1.2 * float(s.px_m.min()):
+            continue
+        first, _, own = cells(x / size, y / size, seed)
+        fade = np.clip(size / s.px_m / 1.5 - 0.6, 0, 1)
+        tone = (own * 7.3) % 1.0
+        stone = blend(colour(0.40, 0.36, 0.31), colour(0.76, 0.71, 0.63), tone)
+        dome = 1.12 - 0.55 * (first / round_) ** 2
+        inside = edge((round_ - first) * size, s.px_m) * (own >= least) * fade
+        shadow = edge((round_ * 1.25 - first) * size, s.px_m) * (own >= least) * fade * 0.45
+        out = out * (1 - shadow[:, None])
+        out = blend(out, tinted(stone * dome[:, None], grain, 0.10), inside.astype(np.float32))
+    return out.astype(np.float32)
 
 
 def ground(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
@@ -136,8 +162,9 @@ def leaves(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
 
 
 def wood_edge(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
-    grain = waves((s.u, s.v), s.px_m, 141 + int(look.get("seed", 1)), 9.0, 0.1, 0.9)
-    return tinted(colour(0.24, 0.33, 0.17), grain, 0.26)
+    grain = waves((s.u, s.v), s.px_m, 141 + int(look.get("seed", 1)), 7.0, 0.1, 0.92)
+    light = np.clip(0.45 + 0.4 * grain, 0, 1)
+    return blend(colour(0.17, 0.25, 0.12), colour(0.42, 0.47, 0.22), light)
 
 
 def bark(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
@@ -233,10 +260,64 @@ def planks(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
     )
 
 
+def poster(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
+    """A board of notices: sheets of paper with headings, lines of print, pictures."""
+    seed = int(look.get("seed", 1))
+    grain = waves((s.u, s.v), s.px_m, 261 + seed, 0.2, 0.002, 0.9)
+    out = tinted(colour(0.33, 0.26, 0.19), grain, 0.2)
+    for layer, size in enumerate((0.44, 0.27)):
+        place_u, place_v = s.u / size + 0.37 * layer, s.v / size / 1.35 + 0.2 * layer
+        i, j = np.floor(place_u).astype(int), np.floor(place_v).astype(int)
+        own = [mixed(i, j, seed=seed + 10 * layer + k) for k in range(6)]
+        u = (place_u - i - 0.5 + 0.16 * (own[4] - 0.5)) * size
+        v = (place_v - j - 0.5 + 0.16 * (own[5] - 0.5)) * size * 1.35
+        half, tall = size * (0.32 + 0.1 * own[1]), size * (0.42 + 0.14 * own[2])
+        warm = colour(0.90, 0.86, 0.74)
+        paper = blend(warm, colour(0.70, 0.80, 0.84), (own[0] > 0.6) * 0.8)
+        paper = blend(paper, colour(0.88, 0.72, 0.40), (own[0] < 0.2) * 0.7)
+        line = np.floor(v / 0.017).astype(int)
+        end = half * (0.2 + 1.5 * mixed(i, line, seed=seed + layer)) - half
+        part = mixed(np.floor(u / 0.011).astype(int), line, seed=seed + 3)
+        printed = (np.abs(v / 0.017 - line - 0.5) < 0.3) & (u < end) & (part > 0.25)
+        show = np.clip(0.009 / s.px_m, 0.15, 0.75).astype(np.float32)
+        sheet = blend(paper, paper * 0.3, printed * (np.abs(u) < 0.85 * half) * show)
+        ink = blend(colour(0.42, 0.15, 0.13), colour(0.13, 0.22, 0.36), own[3] > 0.5)
+        sheet = blend(
+            sheet,
+            ink,
+            edge(np.minimum(v - 0.55 * tall, 0.8 * tall - v), s.px_m) * (np.abs(u) < 0.7 * half),
+        )
+        scene = waves((s.u, s.v), s.px_m, 271 + seed, 0.11, 0.004, 0.7)
+        picture = blend(
+            colour(0.30, 0.38, 0.22), colour(0.72, 0.74, 0.70), np.clip(0.5 + 0.6 * scene, 0, 1)
+        )
+        framed = (own[3] * own[0] > 0.2) * edge(
+            np.minimum(0.8 * half - np.abs(u), 0.45 * tall - np.abs(v)), s.px_m
+        )
+        sheet = blend(sheet, picture, framed)
+        there = edge(np.minimum(half - np.abs(u), tall - np.abs(v)), s.px_m) * (
+            own[1] + own[2] > 0.55
+        )
+        out = blend(out, tinted(sheet, grain, 0.07), there)
+    return out.astype(np.float32)
+
+
+def striped(s: Spot, look: Mapping[str, Any]) -> np.ndarray:
+    """An awning's cloth."""
+    seed = int(look.get("seed", 1))
+    wide = float(look.get("stripe_m", 0.22))
+    fold = waves((s.u, s.v), s.px_m, 281 + seed, 0.6, 0.01, 0.85)
+    place = s.u / wide
+    odd = edge((np.abs(place % 2.0 - 1.0) - 0.5) * wide, s.px_m)
+    paint = np.array(look.get("paint", (0.62, 0.22, 0.18)), dtype=np.float32)
+    return tinted(blend(colour(0.90, 0.87, 0.78), paint, odd), fold, 0.09)
+
+
 Material = Callable[[Spot, Mapping[str, Any]], np.ndarray]
 
 MATERIALS: dict[str, Material] = {
     "grass": grass, "paving": paving, "cobbles": cobbles, "gravel": gravel, "ground": ground,
     "water": water, "leaves": leaves, "wood_edge": wood_edge, "bark": bark, "timber": timber,
-    "painted": painted, "plates": plates, "stone": stone, "planks": planks,
+    "painted": painted, "plates": plates, "stone": stone, "planks": planks, "poster": poster,
+    "striped": striped,
 }  # fmt: skip

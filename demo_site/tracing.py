@@ -17,6 +17,8 @@ LEAST_M = 1e-4
 # Share of the radius and least noise of a leaf, outermost first.
 SHELLS = ((1.0, 1.1), (0.9, 0.45), (0.78, -0.05), (0.6, -0.6))
 BUMPS, FINE = 18, 6
+# Ragged top of a far wood: wave (m), share of its height, how much it overhangs.
+WOOD = ((17.0, 0.13, 0.0), (6.0, 0.10, 0.0), (2.2, 0.05, 0.5), (0.7, 0.03, 1.0))
 
 
 def distance_to(piece: Piece, start: np.ndarray, towards: np.ndarray) -> np.ndarray:
@@ -52,10 +54,10 @@ def _to_panel(piece: Panel, start: np.ndarray, towards: np.ndarray) -> np.ndarra
         u = np.where(inside, u, 0.0)
         seed = int(piece.look.get("seed", 1))
         ragged = sum(
-            weight * noise2(u / wave, v / wave, seed + turn)
-            for turn, (wave, weight) in enumerate(((9.0, 0.18), (3.1, 0.12), (0.9, 0.06)))
+            weight * noise2(u / wave, v * part / wave, seed + turn)
+            for turn, (wave, weight, part) in enumerate(WOOD)
         )
-        inside &= v <= piece.height_m * (0.72 + ragged)
+        inside &= v <= piece.height_m * (0.74 + ragged)
     return np.where(inside, t, np.inf)
 
 
@@ -71,21 +73,26 @@ def _to_ball(piece: Ball, start: np.ndarray, towards: np.ndarray) -> np.ndarray:
     meets = np.flatnonzero((root >= 0) & (-b + root > LEAST_M))
     if not len(meets):
         return best
-    start = start if start.ndim == 1 else start[meets]
-    towards = towards if towards.ndim == 1 else towards[meets]
-    b, square = b[meets], square if np.ndim(square) == 0 else square[meets]
-    found = np.full(len(meets), np.inf)
-    # Shells of leaves, the outer ones thin, so that the rim is ragged.
-    for share, gaps in SHELLS:
-        root = np.sqrt(b * b - square + (share * piece.radius_m) ** 2)
-        for t in (-b - root, -b + root):
-            index = np.flatnonzero((t > LEAST_M) & (t < found))
-            point = (start if start.ndim == 1 else start[index]) + t[index, None] * (
-                towards if towards.ndim == 1 else towards[index]
-            )
-            solid = index[leaf_cover(piece, point, gaps)]
-            found[solid] = t[solid]
-    best[meets] = found
+    # Shells of leaves, the outer ones thin, so that the rim is ragged; in the order a ray meets
+    # them, so that the first leaf it meets is the nearest.
+    order = [(share, gaps, -1.0) for share, gaps in SHELLS]
+    order += [(share, gaps, 1.0) for share, gaps in reversed(SHELLS)]
+    for share, gaps, side in order:
+        own = b[meets]
+        root = own * own - (square if np.ndim(square) == 0 else square[meets])
+        t = side * np.sqrt(root + (share * piece.radius_m) ** 2) - own
+        place = np.flatnonzero(t > LEAST_M)
+        index = meets[place]
+        point = (start if start.ndim == 1 else start[index]) + t[place, None] * (
+            towards if towards.ndim == 1 else towards[index]
+        )
+        leaf = leaf_cover(piece, point, gaps)
+        best[index[leaf]] = t[place[leaf]]
+        left = np.ones(len(meets), dtype=bool)
+        left[place[leaf]] = False
+        meets = meets[left]
+        if not len(meets):
+            break
     return best
 
 
@@ -99,7 +106,9 @@ def _foliage() -> np.ndarray:
         waves[:, None, None] ** 2 + waves[None, :, None] ** 2 + waves[: size // 2 + 1] ** 2
     )
     band = np.exp(-0.5 * ((wave - BUMPS * 0.62) / (BUMPS * 0.22)) ** 2)
-    block = np.fft.irfftn(np.fft.rfftn(rng.standard_normal((size, size, size))) * band, (size,) * 3)
+    block = np.fft.irfftn(
+        np.fft.rfftn(rng.standard_normal((size, size, size))) * band, (size,) * 3, (0, 1, 2)
+    )
     return (block / block.std()).astype(np.float32)
 
 

@@ -65,8 +65,18 @@ def unhidden(scene: Scene, view: View, thing: Thing, points: np.ndarray) -> np.n
     far = np.linalg.norm(away, axis=1)
     towards = away / far[:, None]
     seen = np.ones(len(points), dtype=bool)
-    for piece in scene.pieces:
-        if piece is not thing.solid and piece != thing.solid:
+    # Only pieces whose ball the bundle of sight lines may meet.
+    middle = towards.mean(axis=0)
+    middle /= np.linalg.norm(middle)
+    half = np.arccos(np.clip((towards @ middle).min(), -1.0, 1.0))
+    centres, reach = scene.bounds
+    gap = centres - station
+    distance = np.linalg.norm(gap, axis=1)
+    turn = np.arccos(np.clip(gap @ middle / distance, -1.0, 1.0))
+    wide = np.where(distance > reach, np.arcsin(np.minimum(reach / distance, 1.0)), np.pi)
+    for number in np.flatnonzero(turn < half + wide + 1e-6):
+        piece = scene.pieces[number]
+        if piece != thing.solid:
             seen &= distance_to(piece, station, towards) > far - 0.02
     return seen
 

@@ -43,7 +43,7 @@ def scenery() -> list[Piece]:
     """All pieces of the village."""
     return [
         *ground(), *street_houses(), *far_houses(), *barn(), *woods(), *far_trees(), *fences(),
-        *boats(), *gate(), *odds_and_ends(), *bridge(),
+        *boats(), *gate(), *odds_and_ends(), *street_life(), *bridge(),
     ]  # fmt: skip
 
 
@@ -117,13 +117,13 @@ def woods() -> list[Piece]:
 def tree(x: float, y: float, tall: float, spread: float, seed: int) -> list[Piece]:
     """A tree of the scenery."""
     trunk = Cone((x, y, -0.1), UP, 0.045 * spread + 0.05, 0.6 * tall, "bark", -0.01, {"seed": seed})
-    return [trunk, *crown((x, y, 0.66 * tall), spread, 9, 100 * seed + 7)]
+    return [trunk, *crown((x, y, 0.68 * tall), spread, 15, 100 * seed + 7)]
 
 
 def far_trees() -> list[Piece]:
     plan = (
         (-42, 22, 8.5, 3.4), (-27, 24.5, 7.5, 3.0), (-20, 30, 9.5, 3.8), (-9, 27, 7.8, 3.2),
-        (9.5, 29, 9.0, 3.6), (13, 44, 10, 4.2), (21, 33, 7.2, 2.8), (41, 27, 8.6, 3.4),
+        (9.5, 29, 9.0, 3.6), (13, 44, 10, 4.2), (15.5, 31, 7.2, 2.8), (41, 27, 8.6, 3.4),
         (54, 20, 8.0, 3.2), (66, 24, 9.4, 3.8), (-60, 19, 9.0, 3.6), (38, 44, 9.0, 3.4),
         (-74, -4.5, 8.0, 3.2), (72, -5.5, 8.6, 3.4), (17, 54, 9.6, 4.0), (-1.5, 40, 9.0, 3.6),
         (88, 14, 9.0, 3.6), (-54, 36, 9.5, 4.0),
@@ -173,6 +173,9 @@ def gate() -> list[Piece]:
     for x, long in ((-7.0, 10.2), (7.02, 2.4)):
         found += box((x, 20.18, 0), (long, 0.26, 1.05), "brick", look=bricks)
         found += box((x, 20.12, 1.05), (long, 0.38, 0.08), "stone", look={"seed": 9})
+    for z in (0.35, 1.15):
+        found.append(Cone((3.82, 20.31, z), EAST, 0.016, 2.58, "painted",
+                          look={"paint": (0.12, 0.13, 0.13)}))  # fmt: skip
     for number, x in enumerate((3.95, 4.35, 4.75, 5.15, 5.55, 5.95)):
         found.append(Cone((x, 20.31, 0.1), UP, 0.014, 1.5 - 0.1 * abs(number - 2.5), "painted",
                           look={"paint": (0.12, 0.13, 0.13)}))  # fmt: skip
@@ -232,12 +235,61 @@ def odds_and_ends() -> list[Piece]:
         found.append(Ball((x, -9.2, 0.62), 0.34, "leaves", 0.4, leafy))
     for row, count in enumerate((5, 4, 3)):
         for number in range(count):
-            place = (-3.0 + 0.26 * (number + 0.5 * row), 12.6, 0.13 + 0.225 * row)
+            place = (-9.0 + 0.26 * (number + 0.5 * row), 12.6, 0.13 + 0.225 * row)
             found.append(Cone(place, NORTH, 0.13, 1.1, "bark", 0.0, {"seed": 7 * row + number}))
     shed = {"seed": 44, "board_m": 0.13, "paint": (0.32, 0.40, 0.36), "tile": (0.34, 0.34, 0.36)}
     found += house(
         (24.5, 24.5), (3.6, 2.6), 2.1, 3.0, "planks", "tiles", -12.0, shed, chimney=False
     )
+    return found
+
+
+def street_life() -> list[Piece]:
+    """Notice boards, shop awnings and market stalls."""
+    found: list[Piece] = []
+    boards = (
+        (-22.6, -8.7, 90), (16.3, -8.4, 75), (36.4, -8.2, 60), (-27.5, -8.0, 80), (2.6, -8.6, 95),
+        (0.6, 16.9, 175), (-12.4, 18.0, 185), (34.0, 17.4, 200), (9.0, 13.4, 165),
+        (26.5, 15.6, 190), (-24.5, 14.8, 160),
+    )  # fmt: skip
+    for number, (x, y, turn) in enumerate(boards):
+        wood = {"seed": 50 + number, "board_m": 0.08, "paint": (0.36, 0.28, 0.21)}
+        c, s = float(np.cos(np.radians(turn))), float(np.sin(np.radians(turn)))
+        for side in (0.0, 1.5):
+            post = (x + side * c, y + side * s, 0.0)
+            found += box(post, (0.09, 0.09, 1.95), "planks", turn, look=wood)
+        for across, shift in (((c, s, 0.0), 0.0), ((-c, -s, 0.0), 1.4)):
+            start = (x + (0.1 + shift) * c, y + (0.1 + shift) * s, 0.75)
+            found.append(Panel(start, across, UP, 1.4, 1.1, "poster", look={"seed": 31 * number}))
+    paints = ((0.62, 0.22, 0.18), (0.18, 0.36, 0.44), (0.28, 0.42, 0.22), (0.66, 0.48, 0.18))
+    for number, (x, wide) in enumerate(
+        ((-11.4, 3.0), (-26.8, 2.6), (6.0, 3.4), (24.0, 3.2), (43.8, 3.0))
+    ):
+        slope = (0.0, float(np.cos(0.5)), -float(np.sin(0.5)))
+        cloth = {"seed": number, "paint": paints[number % 4]}
+        found.append(Panel((x, -9.68, 2.95), EAST, slope, wide, 1.35, "striped", look=cloth))
+        sign = {"seed": 7 + number, "paint": paints[(number + 1) % 4]}
+        found += box((x + 0.3, -9.72, 3.0), (wide - 0.6, 0.06, 0.4), "painted", look=sign)
+    for number, (x, y) in enumerate(((-21.6, -7.6), (13.2, -7.9), (28.4, -7.4), (39.4, -7.6))):
+        wood = {"seed": 80 + number, "board_m": 0.1, "paint": (0.50, 0.41, 0.30)}
+        for dx in (0.0, 1.92):
+            for dy in (0.0, 1.02):
+                found += box((x + dx, y + dy, 0.0), (0.07, 0.07, 2.15), "planks", look=wood)
+        found += box((x, y, 0.72), (2.0, 1.1, 0.06), "planks", look=wood)
+        found += box(
+            (x + 0.02, y + 1.04, 0.1), (1.95, 0.03, 0.62), "poster", look={"seed": 5 * number}
+        )
+        for side in (1, -1):
+            rise = (0.0, side * 0.94, 0.342)
+            cloth = {"seed": 9 + number, "paint": paints[(number + 2) % 4], "stripe_m": 0.16}
+            along = EAST if side > 0 else WEST
+            low = (x - 0.15 if side > 0 else x + 2.15, y + 0.55 - side * 0.72, 2.1)
+            found.append(Panel(low, along, rise, 2.3, 0.77, "striped", look=cloth))
+        for k in range(5):
+            spot = (x + 0.15 + 0.38 * k, y + 0.15, 0.78)
+            found += box(spot, (0.3, 0.75, 0.14), "planks", look={**wood, "seed": k})
+            fruit = {"seed": 3 * k + number, "leaf_m": 0.05, "tint": 0.25 * k}
+            found.append(Ball((spot[0] + 0.15, y + 0.5, 0.84), 0.2, "leaves", 0.4, fruit))
     return found
 
 
