@@ -17,12 +17,6 @@ import jinja2
 
 from fieldround.deliver.crops import Crop, Line
 
-VERDICT_WORDS = {
-    "accept": "accept",
-    "remeasure": "measure again",
-    "no result": "no result",
-}
-
 
 @functools.cache
 def environment(package: str = "fieldround.deliver") -> jinja2.Environment:
@@ -35,7 +29,7 @@ def environment(package: str = "fieldround.deliver") -> jinja2.Environment:
         lstrip_blocks=True,
     )
     env.filters.update(number=number, metres=metres, interval=interval, data_address=data_address)
-    env.globals.update(path=path, VERDICT_WORDS=VERDICT_WORDS)
+    env.globals.update(path=path)
     return env
 
 

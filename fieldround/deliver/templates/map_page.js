@@ -175,7 +175,7 @@ function showRound(map, groups, background) {
       }
       box.append(big);
     }
-    box.append(text("p", words(row.verdict), "verdict"));
+    box.append(text("p", row.verdict, "verdict"));
     if (row.reasons.length) {
       var list = text("ul", "", "reasons");
       row.reasons.forEach(function (reason) { list.append(text("li", reason)); });
@@ -233,9 +233,6 @@ function showRound(map, groups, background) {
     return box;
   }
 
-  function words(verdict) {
-    return verdict === "remeasure" ? "measure again" : verdict;
-  }
   function end(value) { return value === null ? "open" : value.toFixed(3) + " m"; }
   function metres(value, digits) { return value === null ? "" : value.toFixed(digits) + " m"; }
   function plusMinus(value, sd, digits, unit) {
