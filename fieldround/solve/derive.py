@@ -6,7 +6,7 @@ frame. Linear propagation (JCGM 100:2008, 5.2) through analytic or central-diffe
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -210,16 +210,10 @@ def budget_of(
     return parts
 
 
-def find_objects(
-    adjusted: Adjusted, index: int, only: Collection[str] | None = None
-) -> dict[int, Finding]:
-    """Figures of the objects of one pair by their place in it; only : names, None for all."""
+def find_objects(adjusted: Adjusted, index: int) -> list[Finding]:
+    """Figures of every object of one pair."""
     fit, covariance = adjusted.fits[index], adjusted.covariances[index]
-    return {
-        k: _find(adjusted, index, fit, covariance, k)
-        for k, thing in enumerate(fit.problem.objects)
-        if only is None or thing.name in only
-    }
+    return [_find(adjusted, index, fit, covariance, k) for k in range(len(fit.problem.objects))]
 
 
 def _find(adjusted: Adjusted, index: int, fit: PairFit, covariance: np.ndarray, k: int) -> Finding:

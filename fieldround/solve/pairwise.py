@@ -195,7 +195,7 @@ def _attempt(
         top=np.zeros(k),
     )
     problem, notes = settled_sides(problem, values, state)
-    state = with_ends(problem, values, state)
+    state = _with_ends(problem, values, state)
     fit, own, converged = settle_pair(problem, state, values, priors)
     everything = np.ones(len(ties))
     stated = replace(
@@ -220,7 +220,7 @@ def _attempt(
     return _Attempt(fit, own, converged, cost, lost, notes)
 
 
-def with_ends(problem: PairProblem, values: np.ndarray, state: PairState) -> PairState:
+def _with_ends(problem: PairProblem, values: np.ndarray, state: PairState) -> PairState:
     """Start heights of base and top: the foot of each mark's ray on the axis."""
     from fieldround.geometry.touching import axis_distance
 

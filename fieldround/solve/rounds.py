@@ -7,7 +7,7 @@ A pair that cannot be solved never stops the others: its objects get `no result`
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -19,7 +19,6 @@ from fieldround.solve.assemble import assemble_pair, winning_marks
 from fieldround.solve.cameras import CameraPriors, camera_covariance, camera_priors, found_card
 from fieldround.solve.combine import combined_objects
 from fieldround.solve.derive import pair_frame
-from fieldround.solve.live import HeldPair, held_pair
 from fieldround.solve.pairwise import PairStart, common_start, solve_alone
 from fieldround.solve.results import ObjectResult, PairResult, Reading
 from fieldround.solve.rows import SolvedPair, solved_pair
@@ -38,7 +37,6 @@ class RoundSolution:
     frames : one a solved pair
     leans  : object -> (pair, direction of its lean in that pair's levelled frame, degrees
              clockwise from ahead)
-    held   : pair -> where the adjustment left it, for `solve.live`
     """
 
     objects: tuple[ObjectResult, ...]
@@ -47,7 +45,6 @@ class RoundSolution:
     cameras_found: Mapping[str, Camera]
     frames: tuple[PairFrame, ...]
     leans: Mapping[str, tuple[str, float]]
-    held: Mapping[str, HeldPair] = field(default_factory=dict)
 
 
 def solve_round(
@@ -96,14 +93,12 @@ def solve_round(
     covariance = camera_covariance(adjusted.camera_normal, priors)
     remarks = _camera_remarks(cards, priors, adjusted)
     solved: dict[str, SolvedPair] = {}
-    held: dict[str, HeldPair] = {}
     frames: list[PairFrame] = []
     for pair in round_.pairs:
         if pair.pair not in ended:
             continue
         start, end, index = ended[pair.pair]
         told = [remarks[i] for i in start.fit.layout.camera_ids if i in remarks]
-        held[pair.pair] = held_pair(start, end, index, told)
         solved[pair.pair] = solved_pair(round_, pair, start, end, index, marks, told, draws)
         frames.append(with_sightings(pair_frame(end, index), end, index, round_, marks))
     objects, chosen = combined_objects(round_, solved, refused, lost, covariance)
@@ -121,7 +116,6 @@ def solve_round(
         cameras_found=_found_cards(cards, adjusted, covariance),
         frames=tuple(frames),
         leans=leans,
-        held=held,
     )
 
 

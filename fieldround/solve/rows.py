@@ -5,7 +5,7 @@ In: a `PairStart` and where it ended in the adjustment. Out: `PairResult`, `Obje
 
 from __future__ import annotations
 
-from collections.abc import Collection, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -56,17 +56,15 @@ def solved_pair(
     marks: Sequence[Mark],
     camera_remarks: Sequence[str],
     draws: int | None = None,
-    only: Collection[str] | None = None,
 ) -> SolvedPair:
     """Rows of one pair after the adjustment.
 
     index          : of the pair in `adjusted`
     camera_remarks : sentences about its cameras
     draws          : Monte Carlo draws asked for, None = only where the linear result is suspect
-    only           : names of the objects whose rows are wanted, None for all
     """
     fit = adjusted.fits[index]
-    findings = find_objects(adjusted, index, only)
+    findings = find_objects(adjusted, index)
     rms = tie_misfit_px(fit, adjusted.values) if fit.tie_keep.any() else None
     spoilers = [*start.spoilers, *scale_contradictions(fit)]
     remarks = [*start.remarks, *camera_remarks]
@@ -87,11 +85,11 @@ def solved_pair(
         spoilers=tuple(spoilers),
         object_remarks=object_remarks,
     )
-    row = _pair_row(pair, start, adjusted, index, list(findings.values()), facts)
+    row = _pair_row(pair, start, adjusted, index, findings, facts)
     listed = {thing.object: thing for thing in round_.objects}
     photos = [round_.photos[name] for name in pair.photos]
     objects = []
-    for k, finding in findings.items():
+    for k, finding in enumerate(findings):
         result = _object_row(
             round_,
             listed[finding.name],
